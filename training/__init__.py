@@ -1,0 +1,1 @@
+"""Build, check and publish estimators: sets, fits, bundles."""
