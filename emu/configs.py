@@ -13,7 +13,12 @@ from emu.errors import UserError
 __all__ = ["config_names", "config_text", "read_toml", "check_keys", "number"]
 
 KINDS = ("families", "campaigns", "training", "targets")
-_SINGULAR = {"families": "family", "campaigns": "campaign", "training": "training config", "targets": "target"}
+_SINGULAR = {
+    "families": "family",
+    "campaigns": "campaign",
+    "training": "training config",
+    "targets": "target",
+}
 _PACKAGE = Path(__file__).resolve().parent
 
 
