@@ -1,0 +1,1 @@
+"""What may have happened: a family is a path, an inner change and the priors of their parameters."""
