@@ -9,7 +9,7 @@ import typer
 from emu import __version__
 from emu.errors import UserError
 
-__all__ = ["command_line", "finish", "run"]
+__all__ = ["command_line", "finish", "listed", "run"]
 
 
 def command_line(name: str, purpose: str) -> typer.Typer:
@@ -61,3 +61,8 @@ def run(app: Callable[[], Any]) -> None:
         raise SystemExit(2) from None
     except KeyboardInterrupt:
         raise SystemExit(130) from None
+
+
+def listed(text: str | None) -> tuple[str, ...] | None:
+    """Split names that are joined by commas; None, for all, stays None."""
+    return None if text is None else tuple(name.strip() for name in text.split(",") if name.strip())
