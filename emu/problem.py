@@ -8,7 +8,6 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from typing import TYPE_CHECKING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -19,10 +18,8 @@ from emu.families.model import Model
 from emu.families.parameters import Parameter
 from emu.families.prior import Prior
 from emu.families.wander import draw_wander
+from emu.observe.campaign import Campaign, campaign
 from emu.observe.rows import KINDS, RowBatch, Rows
-
-if TYPE_CHECKING:
-    from emu.observe.campaign import Campaign
 
 __all__ = ["Expected", "Problem", "Q_LIKE", "U_LIKE", "problem"]
 
@@ -197,9 +194,16 @@ class Problem:
         return curves[need]
 
 
-def problem(family_name: str, campaign_name: str) -> Problem:
-    """Join a family and a campaign by their names or TOML paths."""
-    from emu.families.catalogue import family
-    from emu.observe.campaign import campaign
+def problem(model_name: str, campaign_name: str) -> Problem:
+    """Join a model and a campaign by name.
 
-    return Problem(family(family_name), campaign(campaign_name))
+    Args:
+        model_name: a shipped family, the path of a family's TOML, or an installed model.
+        campaign_name: a shipped campaign, or the path of a campaign's TOML.
+
+    Raises:
+        UserError: one of them cannot be found or makes no sense.
+    """
+    from emu.families.installed import model
+
+    return Problem(model(model_name), campaign(campaign_name))

@@ -7,7 +7,7 @@ from typing import Protocol
 import numpy as np
 from numpy.typing import NDArray
 
-__all__ = ["Density"]
+__all__ = ["Array", "Density"]
 
 Array = NDArray[np.float64]
 

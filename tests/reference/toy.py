@@ -191,7 +191,7 @@ class ExactEstimator:
             mean, root = self._answer(batch.rows(flare))
             theta[flare] = mean + rng.standard_normal((draws, len(mean))) @ root.T
             if progress is not None:
-                progress(flare + 1)
+                progress(1)
         return theta, self.log_prob(theta, batch)
 
     def log_prob(self, theta, batch: RowBatch):

@@ -1,0 +1,1 @@
+"""From rows to posteriors: the exact likelihood, estimators and samplers."""
