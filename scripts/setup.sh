@@ -31,7 +31,7 @@ make_environment() {
 install() {
     [ -x .venv/bin/python ] && .venv/bin/python -c 'import pip' 2>/dev/null || make_environment
     say "installing emu-flares and its pinned dependencies into .venv"
-    .venv/bin/python -m pip install --quiet --disable-pip-version-check \
+    .venv/bin/python -m pip install -qq --disable-pip-version-check \
         --constraint configs/constraints.txt --editable '.[test]'
     wanted_stamp > .venv/emu-flares.stamp
 }
