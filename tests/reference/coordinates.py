@@ -40,9 +40,11 @@ def jacobian(r: float, theta: float, phi: float, spin: float) -> np.ndarray:
     by_r = math.sin(theta) * turn - 1j * (spin / delta) * plane
     by_theta = complex(r, -spin) * math.cos(theta) * turn
     by_phi = 1j * plane
-    return np.array([
-        [1.0, -2.0 * r / delta, 0.0, 0.0],
-        [0.0, by_r.real, by_theta.real, by_phi.real],
-        [0.0, by_r.imag, by_theta.imag, by_phi.imag],
-        [0.0, math.cos(theta), -r * math.sin(theta), 0.0],
-    ])
+    return np.array(
+        [
+            [1.0, -2.0 * r / delta, 0.0, 0.0],
+            [0.0, by_r.real, by_theta.real, by_phi.real],
+            [0.0, by_r.imag, by_theta.imag, by_phi.imag],
+            [0.0, math.cos(theta), -r * math.sin(theta), 0.0],
+        ]
+    )

@@ -17,7 +17,7 @@ from scipy.integrate import solve_ivp
 
 from tests.reference.jets import multiply, power, variable
 
-__all__ = ["Ray", "far_radius", "metric", "shoot", "start"]
+__all__ = ["Ray", "metric", "shoot", "slopes", "start"]
 
 #: State: x (0:4), p_i (4:7), (dx, dp_i) for alpha (7:14) and beta (14:21), screen right (21:25), up (25:29).
 FULL = 29
@@ -46,11 +46,13 @@ def field(x: float, y: float, z: float, spin: float) -> tuple[np.ndarray, np.nda
 @njit(cache=True)
 def hessian(jet: np.ndarray, d: np.ndarray) -> np.ndarray:
     """Return the Hessian of a jet applied to the vector d (3,)."""
-    return np.array([
-        jet[4] * d[0] + jet[5] * d[1] + jet[6] * d[2],
-        jet[5] * d[0] + jet[7] * d[1] + jet[8] * d[2],
-        jet[6] * d[0] + jet[8] * d[1] + jet[9] * d[2],
-    ])
+    return np.array(
+        [
+            jet[4] * d[0] + jet[5] * d[1] + jet[6] * d[2],
+            jet[5] * d[0] + jet[7] * d[1] + jet[8] * d[2],
+            jet[6] * d[0] + jet[8] * d[1] + jet[9] * d[2],
+        ]
+    )
 
 
 @njit(cache=True)
@@ -103,15 +105,19 @@ def slopes(state: np.ndarray, spin: float) -> np.ndarray:
     out[:4] = k
     out[4:7] = 0.5 * fgrad * w * w + f[0] * w * wgrad
     for first in range(7, min(state.size, 21), 7):
-        d, dp = state[first + 1:first + 4], state[first + 4:first + 7]
+        d, dp = state[first + 1 : first + 4], state[first + 4 : first + 7]
         df, dw = np.dot(fgrad, d), np.dot(value, dp) + np.dot(wgrad, d)
         out[first] = -(df * w + f[0] * dw)
-        out[first + 1:first + 4] = dp - (df * w + f[0] * dw) * value - f[0] * w * np.dot(grad, d)
+        out[first + 1 : first + 4] = dp - (df * w + f[0] * dw) * value - f[0] * w * np.dot(grad, d)
         bend = p[0] * hessian(n[0], d) + p[1] * hessian(n[1], d) + p[2] * hessian(n[2], d)
-        out[first + 4:first + 7] = (0.5 * w * w * hessian(f, d) + fgrad * w * dw + (df * w + f[0] * dw) * wgrad
-                                    + f[0] * w * (bend + np.dot(dp, grad)))
+        out[first + 4 : first + 7] = (
+            0.5 * w * w * hessian(f, d)
+            + fgrad * w * dw
+            + (df * w + f[0] * dw) * wgrad
+            + f[0] * w * (bend + np.dot(dp, grad))
+        )
     for first in range(21, state.size, 4):
-        out[first:first + 4] = transport(f, n, k, state[first:first + 4])
+        out[first : first + 4] = transport(f, n, k, state[first : first + 4])
     return out
 
 
@@ -129,8 +135,9 @@ def screen_axes(inclination: float) -> tuple[np.ndarray, np.ndarray, np.ndarray]
 def _start_ray(spin: float, inclination: float, alpha: float, beta: float, far: float) -> np.ndarray:
     """Return (x, p_i) (7,) where the ray that reaches (alpha, beta) crosses |x| = far.
 
-    A straight line in these coordinates at the time of a plane wave front (exact for a radial ray; the rest is
-    of order spin b / far^2 and b^2 / far^3), with angular momentum b about the centre and p_radial from H = 0.
+    A straight line in these coordinates at the time of a plane wave front (exact for a radial ray; the rest
+    is of order spin b / far^2 and b^2 / far^3), with angular momentum b about the centre and the radial
+    momentum from H = 0.
     """
     toward, right, up = screen_axes(inclination)
     offset = alpha * right + beta * up
@@ -147,21 +154,26 @@ def _start_ray(spin: float, inclination: float, alpha: float, beta: float, far: 
     return np.concatenate([[lag], place, size * radial + across])
 
 
-def start(spin: float, inclination: float, alpha: float, beta: float, far: float, size: int = FULL) -> np.ndarray:
-    """Return the first `size` entries of the state at the observer (7 ray, 21 with deviations, 29 with screen)."""
+def start(
+    spin: float, inclination: float, alpha: float, beta: float, far: float, size: int = FULL
+) -> np.ndarray:
+    """Return the first `size` entries of the state at the observer.
+
+    7 entries are the ray, 21 with the deviations, 29 with the screen's axes.
+    """
     state = np.zeros(FULL)
     state[:7] = _start_ray(spin, inclination, alpha, beta, far)
     h = 0.1  # the start is smooth on the scale `far`, so a wide step costs nothing and saves digits
     for first, (da, db) in ((7, (h, 0.0)), (14, (0.0, h))):
         plus = _start_ray(spin, inclination, alpha + da, beta + db, far)
         minus = _start_ray(spin, inclination, alpha - da, beta - db, far)
-        state[first:first + 7] = (plus - minus) / (2.0 * h)
+        state[first : first + 7] = (plus - minus) / (2.0 * h)
     g = metric(state[:4], spin)
     k = slopes(state[:7].copy(), spin)[:4]
     for first, axis in zip((21, 25), screen_axes(inclination)[1:], strict=True):
         vector = np.concatenate([[0.0], axis])
         vector[0] -= (vector @ g @ k) / (g[0] @ k)
-        state[first:first + 4] = vector / math.sqrt(vector @ g @ vector)
+        state[first : first + 4] = vector / math.sqrt(vector @ g @ vector)
     return state[:size].copy()
 
 
@@ -193,8 +205,8 @@ class Ray:
 def cross_section(state: np.ndarray, spin: float) -> float:
     """Return the signed area of the ray bundle per unit of screen area.
 
-    eps(w, k, J_alpha, J_beta) / (w . k) is the same for every w, since k . J = 0 (sqrt(-g) = 1 here); w is the
-    time direction orthogonal to the slices of constant coordinate time.
+    eps(w, k, J_alpha, J_beta) / (w . k) is the same for every w, since k . J = 0 (sqrt(-g) = 1 here); w is
+    the time direction orthogonal to the slices of constant coordinate time.
     """
     k = slopes(state[:7].copy(), spin)[:4]
     f, n = field(state[1], state[2], state[3], spin)
@@ -203,15 +215,33 @@ def cross_section(state: np.ndarray, spin: float) -> float:
     return float(np.linalg.det(block) / k[0])  # -normal . k = k^t
 
 
-def shoot(spin: float, inclination: float, alpha: float, beta: float, length: float, far: float,
-          rtol: float = 1e-12, screen: bool = False) -> Ray | None:
+def shoot(
+    spin: float,
+    inclination: float,
+    alpha: float,
+    beta: float,
+    length: float,
+    far: float,
+    rtol: float = 1e-12,
+    screen: bool = False,
+) -> Ray | None:
     """Integrate a ray back from the observer over the affine `length`; None where the integrator gives up."""
     first = start(spin, inclination, alpha, beta, far, FULL if screen else 21)
-    found = solve_ivp(lambda s, y: slopes(y, spin), (0.0, -length), first, method="DOP853", rtol=rtol, atol=rtol)
+    found = solve_ivp(
+        lambda s, y: slopes(y, spin), (0.0, -length), first, method="DOP853", rtol=rtol, atol=rtol
+    )
     last = found.y[:, -1]
     if not found.success or not np.all(np.isfinite(last)):
         return None
     areas = [cross_section(found.y[:, i], spin) for i in range(found.t.size)]
-    return Ray(x=last[:4], p=np.concatenate([[-1.0], last[4:7]]), k=slopes(last[:7].copy(), spin)[:4],
-               d_alpha=last[7:11], d_beta=last[14:18], right=last[21:25], up=last[25:29],
-               index=int(np.sum(np.diff(np.sign(areas)) != 0)), spread=areas[-1])
+    return Ray(
+        x=last[:4],
+        p=np.concatenate([[-1.0], last[4:7]]),
+        k=slopes(last[:7].copy(), spin)[:4],
+        d_alpha=last[7:11],
+        d_beta=last[14:18],
+        right=last[21:25],
+        up=last[25:29],
+        index=int(np.sum(np.diff(np.sign(areas)) != 0)),
+        spread=areas[-1],
+    )
