@@ -5,13 +5,14 @@ from __future__ import annotations
 import json
 import tomllib
 from collections.abc import Callable, Mapping
-from dataclasses import fields
 from typing import Any
 
 from emu.configs import check_keys, config_names, config_text, number
 from emu.errors import UserError
 from emu.families.density import Density
 from emu.families.family import Family
+from emu.families.installed import installed_model, installed_names
+from emu.families.model import Model
 from emu.families.normal import Normal
 from emu.families.parameters import Parameter
 from emu.families.priors import CosUniform, LogUniform, SinUniform, TwoSided, Uniform
@@ -47,19 +48,28 @@ _OPTIONAL = {"bumps": 1, "spot": False, "orders": 1}
 
 
 def family_names() -> tuple[str, ...]:
-    """Return the names of the shipped families."""
+    """Return the names of the shipped families; `installed_names` has those of other packages."""
     return config_names("families")
 
 
-def family(name: str) -> Family:
-    """Return a family.
+def family(name: str) -> Model:
+    """Return a family by name.
 
     Args:
-        name: a shipped family, or the path of a `.toml` file.
+        name: a shipped family, the path of a family's `.toml` file, or an installed model's entry point.
+
+    Returns:
+        A `Family`, or whatever model another package brought along.
 
     Raises:
         UserError: it cannot be found or read, or makes no sense.
     """
+    others = installed_names()
+    twice = set(others) & set(family_names())
+    if name in twice:
+        raise UserError(f"an installed model has the name of the family {name!r}: rename its entry point")
+    if name in others:
+        return installed_model(name)
     return parse_family(*config_text("families", name))
 
 
@@ -85,9 +95,7 @@ def parse_family(text: str, where: str) -> Family:
         for key, allowed in (("bumps", (1, 2)), ("spot", (False, True)), ("orders", (1, 2)))
     )
     source = Source(_PATHS[path], *_INNER[inner], bumps)
-    interval = _pair(table, "valid", where)
-    if not interval[0] < 0.0 < interval[1]:
-        raise UserError(f"{where}: valid is {list(interval)}; give an interval that holds time 0")
+    interval, r_min = _validity(table, where)
     return Family(
         name=_text(table, "name", where),
         description=_text(table, "description", where),
@@ -96,7 +104,7 @@ def parse_family(text: str, where: str) -> Family:
         source=source,
         parameters=_parameters(table["parameters"], _names(source, spot), f"{where}: [parameters]"),
         valid_interval=interval,
-        r_min=number(table, "r_min", where),
+        r_min=r_min,
         bumps=bumps,
         spot=spot,
         orders=orders,
@@ -120,9 +128,19 @@ def family_text(family: Family) -> str:
     ]
     words = {density: word for word, density in _DENSITIES.items()}
     for parameter in family.parameters:
-        first, second = (getattr(parameter.prior, f.name) for f in fields(parameter.prior))  # type: ignore[arg-type]
-        lines.append(f"{parameter.name} = {{ {words[type(parameter.prior)]} = [{first!r}, {second!r}] }}")
+        numbers = [float(value) for value in vars(parameter.prior).values()]
+        lines.append(f"{parameter.name} = {{ {words[type(parameter.prior)]} = {numbers!r} }}")
     return "\n".join(lines) + "\n"
+
+
+def _validity(table: Mapping[str, Any], where: str) -> tuple[tuple[float, float], float]:
+    """Read where a path must be possible: over which emission times, and down to which radius."""
+    interval, r_min = _pair(table, "valid", where), number(table, "r_min", where)
+    if not interval[0] < 0.0 < interval[1]:
+        raise UserError(f"{where}: valid is {list(interval)}; give an interval that holds time 0")
+    if r_min < 1.0:
+        raise UserError(f"{where}: r_min is {r_min:g}; give 1 or more, the least radius of any horizon")
+    return interval, r_min
 
 
 def _names(source: Source, spot: bool) -> tuple[str, ...]:
@@ -167,8 +185,8 @@ def _pair(table: Mapping[str, Any], key: str, where: str) -> tuple[float, float]
 def _text(table: Mapping[str, Any], key: str, where: str) -> str:
     """Return a key of a table as text."""
     value = table[key]
-    if not isinstance(value, str) or not value.isprintable():
-        raise UserError(f"{where}: {key} is {value!r}; give a text of one line")
+    if not isinstance(value, str) or not value or not value.isprintable():
+        raise UserError(f"{where}: {key} is {value!r}; give one line of text")
     return value
 
 

@@ -1,62 +1,44 @@
-"""Models that other packages bring along, beside our families."""
+"""Models that other packages bring along as entry points of the group `emu.models`."""
 
 from __future__ import annotations
 
-from importlib.metadata import EntryPoint, entry_points
+from importlib.metadata import entry_points
 
 from emu.errors import UserError
-from emu.families.catalogue import family, family_names
 from emu.families.model import Model
 
-__all__ = ["model", "model_names"]
+__all__ = ["installed_model", "installed_names"]
 
-GROUP = "emu.models"
-
-
-def model_names() -> tuple[str, ...]:
-    """Return the names of the shipped families, then those of installed models."""
-    return (*family_names(), *sorted(_installed()))
+_GROUP = "emu.models"
+_SEAM = ("name", "parameters", "kinds", "standard_frame", "valid", "curves", "scatter")
 
 
-def model(name: str) -> Model:
-    """Return a model.
+def installed_names() -> tuple[str, ...]:
+    """Return the names of installed models in alphabetical order."""
+    return tuple(sorted(entry_points(group=_GROUP).names))
+
+
+def installed_model(name: str) -> Model:
+    """Import an installed model: the object itself, or what a factory without arguments makes.
 
     Args:
-        name: a shipped family, the path of a family's `.toml`, or the entry-point name of an installed
-            model.
+        name: one of `installed_names()`.
 
     Raises:
-        UserError: there is none of this name, or what was installed is no model.
+        UserError: it cannot be imported, or is no model.
     """
-    installed = _installed()
-    if name not in installed:
-        known = family_names()
-        if name in known or name.endswith(".toml"):
-            return family(name)
-        others = f", an installed model ({', '.join(sorted(installed))})" if installed else ""
-        raise UserError(f"no model {name!r}: one of {', '.join(known)}{others}, or the path of a .toml file")
-    if name in family_names():
-        raise UserError(f"installed model {name!r} has the name of a shipped family; rename its entry point")
-    return _load(installed[name])
-
-
-def _installed() -> dict[str, EntryPoint]:
-    """Find entry points of our group by name."""
-    return {point.name: point for point in entry_points(group=GROUP)}
-
-
-def _load(point: EntryPoint) -> Model:
-    """Import a model: the object itself, or what a factory without arguments makes."""
-    where = f"installed model {point.name!r} ({point.value})"
+    point = entry_points(group=_GROUP)[name]
+    where = f"installed model {name!r} ({point.value})"
     try:
-        loaded = point.load()
-        found = loaded() if isinstance(loaded, type) or not isinstance(loaded, Model) else loaded
+        found = point.load()
+        if isinstance(found, type) or not isinstance(found, Model):
+            found = found()
     except Exception as problem:
         raise UserError(f"{where} cannot be loaded: {type(problem).__name__}: {problem}") from problem
-    if not isinstance(found, Model):
-        missing = [word for word in _SEAM if not hasattr(found, word)]
+    missing = [word for word in _SEAM if not hasattr(found, word)]
+    if missing:
         raise UserError(f"{where} is no model: it lacks {', '.join(missing)}")
-    return found
-
-
-_SEAM = ("name", "parameters", "kinds", "standard_frame", "valid", "curves", "scatter")
+    if found.name != name:
+        raise UserError(f"{where} calls itself {found.name!r}: give both one name")
+    model: Model = found
+    return model
