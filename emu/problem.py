@@ -204,6 +204,6 @@ def problem(model_name: str, campaign_name: str) -> Problem:
     Raises:
         UserError: one of them cannot be found or makes no sense.
     """
-    from emu.families.catalogue import family
+    from emu.families.installed import model
 
-    return Problem(family(model_name), campaign(campaign_name))
+    return Problem(model(model_name), campaign(campaign_name))

@@ -11,8 +11,6 @@ from emu.configs import check_keys, config_names, config_text, number
 from emu.errors import UserError
 from emu.families.density import Density
 from emu.families.family import Family
-from emu.families.installed import installed_model, installed_names
-from emu.families.model import Model
 from emu.families.normal import Normal
 from emu.families.parameters import Parameter
 from emu.families.priors import CosUniform, LogUniform, SinUniform, TwoSided, Uniform
@@ -52,24 +50,15 @@ def family_names() -> tuple[str, ...]:
     return config_names("families")
 
 
-def family(name: str) -> Model:
-    """Return a family by name.
+def family(name: str) -> Family:
+    """Return a family of ours; `emu.families.installed.model` finds models of other packages too.
 
     Args:
-        name: a shipped family, the path of a family's `.toml` file, or an installed model's entry point.
-
-    Returns:
-        A `Family`, or whatever model another package brought along.
+        name: a shipped family, or the path of a `.toml` file.
 
     Raises:
         UserError: it cannot be found or read, or makes no sense.
     """
-    others = installed_names()
-    twice = set(others) & set(family_names())
-    if name in twice:
-        raise UserError(f"an installed model has the name of the family {name!r}: rename its entry point")
-    if name in others:
-        return installed_model(name)
     return parse_family(*config_text("families", name))
 
 

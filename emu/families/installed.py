@@ -1,13 +1,14 @@
-"""Models that other packages bring along as entry points of the group `emu.models`."""
+"""Any model by name: a family of ours, or what another package brings as an entry point of `emu.models`."""
 
 from __future__ import annotations
 
 from importlib.metadata import entry_points
 
 from emu.errors import UserError
+from emu.families.catalogue import family, family_names
 from emu.families.model import Model
 
-__all__ = ["installed_model", "installed_names"]
+__all__ = ["installed_names", "model"]
 
 _GROUP = "emu.models"
 _SEAM = ("name", "parameters", "kinds", "standard_frame", "valid", "curves", "scatter")
@@ -18,15 +19,24 @@ def installed_names() -> tuple[str, ...]:
     return tuple(sorted(entry_points(group=_GROUP).names))
 
 
-def installed_model(name: str) -> Model:
-    """Import an installed model: the object itself, or what a factory without arguments makes.
+def model(name: str) -> Model:
+    """Return a model by name.
 
     Args:
-        name: one of `installed_names()`.
+        name: a shipped family, the path of a family's `.toml`, or the entry point of an installed model.
 
     Raises:
-        UserError: it cannot be imported, or is no model.
+        UserError: there is none, it makes no sense, or two bear the name.
     """
+    if name not in installed_names():
+        return family(name)
+    if name in family_names():
+        raise UserError(f"an installed model has the name of the family {name!r}: rename its entry point")
+    return _load(name)
+
+
+def _load(name: str) -> Model:
+    """Import an installed model: the object itself, or what a class or function without arguments makes."""
     point = entry_points(group=_GROUP)[name]
     where = f"installed model {name!r} ({point.value})"
     try:
@@ -40,5 +50,5 @@ def installed_model(name: str) -> Model:
         raise UserError(f"{where} is no model: it lacks {', '.join(missing)}")
     if found.name != name:
         raise UserError(f"{where} calls itself {found.name!r}: give both one name")
-    model: Model = found
-    return model
+    loaded: Model = found
+    return loaded

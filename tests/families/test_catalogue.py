@@ -1,14 +1,9 @@
 """Families from TOML: what is read, what is refused and how the refusal reads."""
 
-from types import SimpleNamespace
-
 import pytest
 
 from emu.errors import UserError
-from emu.families import installed
 from emu.families.catalogue import family, family_text, parse_family
-from emu.families.family import Family
-from tests.reference.toy import ToyModel
 
 TEXT = family_text(family("midplane-frozen"))
 BUMP = """
@@ -89,39 +84,3 @@ def test_a_mistake_is_one_line_that_names_file_and_cure(old, new, message):
 def test_an_unknown_family_lists_the_known():
     with pytest.raises(UserError, match="midplane-frozen"):
         family("no-such")
-
-
-class Installed(dict):
-    """Stand in for the entry points of this environment."""
-
-    @property
-    def names(self):
-        return set(self)
-
-
-def install(monkeypatch, name, load):
-    point = SimpleNamespace(name=name, value="somewhere:thing", load=load)
-    monkeypatch.setattr(installed, "entry_points", lambda group: Installed({name: point}))
-
-
-def test_an_installed_model_is_found_as_object_class_or_factory(monkeypatch):
-    for load in (ToyModel, lambda: ToyModel, lambda: lambda: ToyModel()):
-        install(monkeypatch, "toy", load)
-        assert family("toy") == ToyModel()
-        assert installed.installed_names() == ("toy",)
-    assert isinstance(family("midplane-frozen"), Family)
-
-
-def test_what_is_installed_but_no_model_is_refused(monkeypatch):
-    def broken():
-        raise ImportError("no such thing")
-
-    for name, load, message in (
-        ("toy", broken, "cannot be loaded: ImportError: no such thing"),
-        ("toy", lambda: lambda: 3, "is no model: it lacks name, parameters"),
-        ("other", lambda: ToyModel, "calls itself 'toy'"),
-        ("midplane-frozen", lambda: ToyModel("midplane-frozen"), "rename its entry point"),
-    ):
-        install(monkeypatch, name, load)
-        with pytest.raises(UserError, match=message):
-            family(name)
