@@ -1,0 +1,92 @@
+"""What the draws of a posterior predict: the curves themselves, and what a new measurement would show."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from scipy.special import ndtri
+
+from emu.families.density import Array
+from emu.observe.rows import KINDS, Rows
+from emu.problem import Problem
+
+__all__ = ["Prediction", "predict", "spread"]
+
+# Standard normal values of equal probability: the noise of a measurement without random numbers.
+_NOISE = ndtri((np.arange(25) + 0.5) / 25)
+
+
+@dataclass(frozen=True)
+class Prediction:
+    """Hold curves of N draws at T times, kind by kind.
+
+    Attributes:
+        times: (T,) GM/c3 from the reference time.
+        curves: kind -> (N, T) noiseless curves; for a turbulent family its mean.
+        deviation: kind -> (N, T) standard deviation of a measurement about the curve: typical error,
+            jitter and random wander added in quadrature.
+        dropped: draws left out because the prior forbids them or a ray could not be solved.
+    """
+
+    times: Array
+    curves: Mapping[str, Array]
+    deviation: Mapping[str, Array]
+    dropped: int
+
+
+def predict(problem: Problem, theta: Array, times: Array, errors: Mapping[str, float]) -> Prediction:
+    """Compute the curves of draws on a grid of times.
+
+    Args:
+        problem: the problem the draws belong to.
+        theta: (N, P) draws, degrees and geometric units.
+        times: (T,) GM/c3 from the reference time.
+        errors: kind -> typical 1-sigma error, in the kind's inner unit; its keys say which kinds.
+
+    Returns:
+        Curves and deviations of the draws that can be computed, with the number of the others.
+    """
+    good = theta[np.isfinite(problem.prior.log_prob(theta))]
+    kinds = tuple(errors)
+    rows = _grid(times, errors)
+    expected = problem.expected(good, rows)
+    solved = expected.failures == 0
+    good, mean, lever = good[solved], expected.mean[solved], expected.lever[solved]
+    variance = problem.variance(good, rows)
+    scatter = problem.scatter(good)
+    if scatter is not None:
+        variance = variance + (lever * scatter[0][:, None]) ** 2
+    shape = (len(good), len(kinds), len(times))
+    mean, deviation = mean.reshape(shape), np.sqrt(variance).reshape(shape)
+    return Prediction(
+        np.asarray(times, float),
+        {kind: mean[:, k] for k, kind in enumerate(kinds)},
+        {kind: deviation[:, k] for k, kind in enumerate(kinds)},
+        len(theta) - len(good),
+    )
+
+
+def spread(curves: Array, levels: Sequence[float], deviation: Array | None = None) -> Array:
+    """Take quantiles over the draws at every time.
+
+    Args:
+        curves: (N, T).
+        levels: L probabilities.
+        deviation: (N, T) normal standard deviation about each curve, or None for the curves alone.
+
+    Returns:
+        (L, T).
+    """
+    if deviation is not None:
+        curves = (curves + deviation * _NOISE[:, None, None]).reshape(-1, curves.shape[-1])
+    return np.asarray(np.quantile(curves, levels, axis=0))
+
+
+def _grid(times: Array, errors: Mapping[str, float]) -> Rows:
+    """Make one row for every kind and time, kind by kind."""
+    count = len(times)
+    kind = np.repeat([KINDS.index(k) for k in errors], count).astype(np.int8)
+    error = np.repeat(list(errors.values()), count).astype(float)
+    return Rows(np.tile(np.asarray(times, float), len(errors)), kind, np.zeros(len(kind)), error)
