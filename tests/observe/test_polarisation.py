@@ -83,7 +83,7 @@ def test_the_larger_error_is_taken(tmp_path: Path) -> None:
         (["5,evpa,10,5", "5,polarised_fraction,.3,.07"], "row 3: polarised_fraction is only 4.3 times"),
         (["5,evpa,10,6", "5,polarised_fraction,.3,.05"], "row 2: error of evpa is 6.0 deg; above 5.86"),
         (["5,evpa,10,5", "5,polarised_fraction,.3,.01"], "row 2: error of evpa is 5.2 times .* correlated"),
-        (["5,evpa,10,3", "5,polarised_fraction,.3,.03", "7,q,.1,.1"], "counts twice; keep one of the two"),
+        (["5,evpa,10,3", "5,polarised_fraction,.3,.03", "7,q,.1,.1"], "count twice; keep one of the two"),
     ],
 )
 def test_refusals_say_why(tmp_path: Path, rows: list[str], reason: str) -> None:
