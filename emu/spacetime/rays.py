@@ -1,0 +1,132 @@
+"""The exact solve: rays from sources to the observer at infinity, image orders 0 and 1.
+
+A solved ray must belong to the image that was asked for: its parity (the sign of the magnification's determinant)
+alternates with the order, and its swept angle lies between order·π and (order + 1)·π up to the drag's second order.
+Rays for which the start led elsewhere go round by continuation: the source is moved away from the caustic, solved
+there, and brought back in small steps.
+"""
+
+from __future__ import annotations
+
+import functools
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numba import njit
+from numpy.typing import NDArray
+
+from emu.spacetime.newton import solve_newton
+from emu.spacetime.start import caustic_centres, start_rays, zero_spin_table
+
+__all__ = ["Rays", "solve_rays"]
+
+Array = NDArray[np.float64]
+Flags = NDArray[np.bool_]
+_NEWTON_STEPS = 14
+_CONTINUATION_STEPS = 24
+_SAFE_ANGLE = 1.2  # radians from the caustic, where the plain start does not fail
+_SWEPT_SLACK = 0.5
+
+
+@dataclass(frozen=True)
+class Rays:
+    """Rays joined to their sources; every array is (N,), G = c = M = 1, photon energy 1 at infinity.
+
+    Attributes:
+        alpha, beta: screen position, GM/c² (Bardeen 1973).
+        tau: Mino time along the ray.
+        delay: light-travel time from the source, up to a constant of the spacetime, GM/c³.
+        p_r, p_theta, p_phi: covariant momentum at the source, p_φ divided by sin θ.
+        magnification: μ = |d(α, β)/dA⊥|, dA⊥ the cross-section of the bundle at the source.
+        swept: angle swept about the hole, the drag apart, rad.
+        failed: True where no ray was found; the other entries are then zero.
+        continued: True where the continuation was needed.
+    """
+
+    alpha: Array
+    beta: Array
+    tau: Array
+    delay: Array
+    p_r: Array
+    p_theta: Array
+    p_phi: Array
+    magnification: Array
+    swept: Array
+    failed: Flags
+    continued: Flags
+
+
+@functools.cache
+def _table() -> Array:
+    return np.asarray(zero_spin_table())
+
+
+@njit(cache=True)
+def _is_image(rays, order, slack):
+    parity = 1.0 if order == 0 else -1.0
+    low, high = order * math.pi - slack, (order + 1) * math.pi + slack
+    return (rays[:, 7] * parity > 0.0) & (rays[:, 8] > low) & (rays[:, 8] < high)
+
+
+def _moved(n: Array, centre: Array, angle: Array) -> Array:
+    """Return the directions on the great circles from `centre` through `n` at the given angles from `centre`."""
+    across = n - np.sum(n * centre, axis=1, keepdims=True) * centre
+    length = np.linalg.norm(across, axis=1, keepdims=True)
+    across = across / np.maximum(length, 1e-300)
+    return np.asarray(np.cos(angle)[:, None] * centre + np.sin(angle)[:, None] * across)
+
+
+def _continue(spin: Array, cos_i: Array, sin_i: Array, r: Array, n: Array, order: int) -> tuple[Array, Flags]:
+    """Solve far from the caustic and bring the sources back in steps of equal ratio of the distance to it."""
+    centre = caustic_centres(_table(), spin, cos_i, sin_i, 1.0 / r, order)
+    target = np.arccos(np.clip(np.sum(n * centre, axis=1), -1.0, 1.0))
+    far = np.maximum(target, _SAFE_ANGLE)
+    rays = np.zeros((len(r), 9))
+    sources = _moved(n, centre, far)
+    begin = np.full((len(r), 3), np.nan)
+    start_rays(_table(), spin, cos_i, sin_i, 1.0 / r, sources, order, begin, rays[:, :3])
+    good = solve_newton(spin, cos_i, sin_i, r, sources, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
+    before = rays[:, :3].copy()
+    for step in range(1, _CONTINUATION_STEPS + 1):
+        share = step / _CONTINUATION_STEPS
+        sources = n if step == _CONTINUATION_STEPS else _moved(n, centre, far ** (1 - share) * target**share)
+        here = rays[:, :3].copy()
+        if step > 1:
+            rays[:, :3] += here - before
+        before = here
+        good &= solve_newton(spin, cos_i, sin_i, r, np.ascontiguousarray(sources), rays, _NEWTON_STEPS)
+    return rays, good & _is_image(rays, order, _SWEPT_SLACK)
+
+
+def solve_rays(
+    spin: Array, inclination: Array, r: Array, n: Array, order: int, start: Array | None = None
+) -> Rays:
+    """Find the rays of one image order from sources to the observer at infinity.
+
+    Args:
+        spin: (N,) a, |a| ≤ 0.998.
+        inclination: (N,) rad.
+        r: (N,) source radii in GM/c², at least 0.5 outside the horizon.
+        n: (N, 3) unit vectors of the sources; the observer is at (sin i, 0, cos i).
+        order: 0 direct, 1 the next.
+        start: (N, 3) near values of (α, β, τ), e.g. those of a neighbouring source; where NaN, or without it, a
+            start is made.
+
+    Returns:
+        The rays; failures are marked, never NaN.
+    """
+    cos_i, sin_i = np.cos(inclination), np.sin(inclination)
+    rays = np.zeros((len(r), 9))
+    begin = np.full((len(r), 3), np.nan) if start is None else start
+    start_rays(_table(), spin, cos_i, sin_i, 1.0 / r, n, order, begin, rays[:, :3])
+    good = solve_newton(spin, cos_i, sin_i, r, n, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
+    (again,) = np.nonzero(~good)
+    if len(again):
+        parts = (spin[again], cos_i[again], sin_i[again], r[again], np.ascontiguousarray(n[again]))
+        rays[again], good[again] = _continue(*parts, order)
+    rays[~good] = 0.0
+    continued = np.zeros(len(r), dtype=bool)
+    continued[again] = True
+    alpha, beta, tau, delay, p_r, p_theta, p_phi, signed, swept = rays.T.copy()
+    return Rays(alpha, beta, tau, delay, p_r, p_theta, p_phi, np.abs(signed), swept, ~good, continued)
