@@ -8,7 +8,7 @@ from functools import cached_property
 import numpy as np
 from numpy.typing import NDArray
 
-from emu.assemble import assemble
+from emu.assemble import assemble, in_radians
 from emu.families.density import Array
 from emu.families.parameters import Parameter
 from emu.families.prior import Prior
@@ -58,7 +58,7 @@ class Family:
 
     def valid(self, theta: Array) -> NDArray[np.bool_]:
         """Tell for theta (N, P) which paths are timelike and beyond r_min all through the interval: (N,)."""
-        return self.source.path.valid(self._values(theta), self.valid_interval, self.r_min)
+        return self.source.path.valid(in_radians(self._values(theta)), self.valid_interval, self.r_min)
 
     def curves(self, theta: Array, times: Array) -> dict[str, Array]:
         """Compute flux, q, u, east, north and failures.
@@ -81,7 +81,7 @@ class Family:
         """Return deviation (N,) and lifetime (N,) of the wander of q and of u; None without turbulence."""
         if self.source.scatter is None:
             return None
-        sigma, lifetime = self.source.scatter.process(self._values(theta))
+        sigma, lifetime = self.source.scatter.process(in_radians(self._values(theta)))
         return np.reshape(sigma, len(theta)), np.reshape(lifetime, len(theta))
 
     def _values(self, theta: Array) -> dict[str, Array]:
