@@ -21,7 +21,6 @@ from emu.problem import Problem
 __all__ = ["EnsemblePlan", "Ensembles", "ensembles", "gather", "plan_ensembles"]
 
 Progress = Callable[[str], None]
-_BLOCK = 500
 _THIN = 5
 _BURN = 300  # steps that are thrown away: starts are draws already, only rough ones
 _MAP_DRAWS = 6000
@@ -71,18 +70,20 @@ class EnsemblePlan:
         maps: fixed proposals fitted to the starting draws.
         start: (C, W, P) first places, no draw twice unless there are too few.
         seed: of all randomness.
+        steps: of a block.
     """
 
     coordinates: SamplingCoordinates
     maps: MapMixture
     start: Array
     seed: int
+    steps: int = 500
 
     def block(self, posterior: CountedPosterior, ensemble: int, before: list[Block]) -> Block:
         """Make the next block of an ensemble: the same whether or not the run was interrupted."""
         start = before[-1].y[-1] if before else self.start[ensemble]
-        seed = np.random.SeedSequence([self.seed, 2, ensemble, len(before)]).generate_state(1)[0]
-        return walk(posterior, self.coordinates, start, self.maps, steps=_BLOCK, thin=_THIN, seed=int(seed))
+        seed = int(np.random.SeedSequence([self.seed, 2, ensemble, len(before)]).generate_state(1)[0])
+        return walk(posterior, self.coordinates, start, self.maps, steps=self.steps, thin=_THIN, seed=seed)
 
 
 def plan_ensembles(posterior: CountedPosterior, start: Draws, *, count: int, walkers: int,
@@ -153,12 +154,13 @@ def ensembles(problem: Problem, rows: Rows, *, start: Draws | None = None, walke
     walkers = max(walkers, 2 * len(problem.parameters))
     plan = plan_ensembles(posterior, begin, count=count, walkers=walkers, seed=seed)
     blocks: list[list[Block]] = [[] for _ in range(count)]
-    found = None
-    while found is None or (not found.converged and len(blocks[0]) * _BLOCK < steps):
+    found, made = None, 0
+    while found is None or (not found.converged and made < steps):
         for ensemble, own in enumerate(blocks):
             own.append(plan.block(posterior, ensemble, own))
+        made += plan.steps
         found = gather(plan, blocks)
         if progress is not None:
-            progress(f"ensembles: {len(blocks[0]) * _BLOCK} steps, R-hat {found.rhat.max():.4f}, "
+            progress(f"ensembles: {made} steps, R-hat {found.rhat.max():.4f}, "
                      f"length {found.length.min():.0f}, accepted {found.acceptance.mean():.2f}")
     return found

@@ -75,8 +75,8 @@ def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: i
 def _run(sampler: NestedSampler, left: float, progress: Progress | None) -> None:
     """Run to the end, with a line of progress at times."""
     for step, state in enumerate(sampler.sample(dlogz=left)):
-        if progress is not None and step % _REPORT_EVERY == 0:
-            progress(f"nested: step {step}, ln Z {state.logz:.2f}, still to come {state.delta_logz:.2f}")
+        if progress is not None and step % _REPORT_EVERY == _REPORT_EVERY - 1:
+            progress(f"nested: step {step + 1}, ln Z {state.logz:.2f}, still to come {state.delta_logz:.2f}")
     for _ in sampler.add_live_points():
         pass
 

@@ -31,31 +31,42 @@ class Gain:
     impossible: int
 
 
-def spread(theta: Array, parameters: tuple[Parameter, ...]) -> Array:
+def spread(theta: Array, parameters: tuple[Parameter, ...],
+           keep: NDArray[np.bool_] | None = None) -> Array:
     """Return the variance of every parameter over the next-to-last axis: (..., D, P) to (..., P).
 
     For a circular parameter it is the circular variance 1 - |mean exp(i theta)| (Mardia & Jupp 2000).
+
+    Args:
+        theta: (..., D, P).
+        parameters: P of them.
+        keep: (..., D) True where a draw counts; all by default.
     """
-    value = theta.var(axis=-2)
+    counts = np.ones(theta.shape[:-1], bool) if keep is None else keep
+    share = (counts / np.maximum(counts.sum(axis=-1, keepdims=True), 1))[..., None]
+    mean = np.sum(share * theta, axis=-2, keepdims=True)
+    value = np.sum(share * (theta - mean) ** 2, axis=-2)
     for column, parameter in enumerate(parameters):
         if parameter.circular:
             turned = np.exp(1j * np.radians(theta[..., column]))
-            value[..., column] = 1.0 - np.abs(turned.mean(axis=-1))
+            value[..., column] = 1.0 - np.abs(np.sum(share[..., 0] * turned, axis=-1))
     return np.asarray(value, float)
 
 
-def contraction(draws: Array, prior_draws: Array, parameters: tuple[Parameter, ...]) -> Array:
+def contraction(draws: Array, prior_draws: Array, parameters: tuple[Parameter, ...],
+                keep: NDArray[np.bool_] | None = None) -> Array:
     """Return 1 - variance of the posterior over variance of the prior (Betancourt 2018).
 
     Args:
         draws: (N, D, P) posterior draws of N flares.
         prior_draws: (M, P).
         parameters: P of them.
+        keep: (N, D) True where a draw counts; all by default.
 
     Returns:
         (N, P): 0 where nothing was learned, 1 where everything was, negative where the posterior is wider.
     """
-    return 1.0 - spread(draws, parameters) / spread(prior_draws, parameters)
+    return 1.0 - spread(draws, parameters, keep) / spread(prior_draws, parameters)
 
 
 def gain(log_q: Array, log_prior: Array) -> Gain:

@@ -1,4 +1,4 @@
-"""Coverage of credible regions at all levels: central, highest density, and random balls (TARP)."""
+"""Coverage of credible regions at all levels: central and highest density."""
 
 from __future__ import annotations
 
@@ -8,8 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from training.checks.bands import Verdict, judge_uniform
+from training.checks.ranks import fractional_ranks
 
-__all__ = ["CoverageCheck", "central_levels", "check_coverage", "density_levels", "tarp_levels"]
+__all__ = ["CoverageCheck", "central_levels", "check_coverage", "density_levels"]
 
 Array = NDArray[np.float64]
 
@@ -43,41 +44,24 @@ def central_levels(ranks: Array) -> Array:
     return np.abs(2.0 * ranks - 1.0)
 
 
-def density_levels(log_truth: Array, log_draws: Array, rng: np.random.Generator) -> Array:
+def density_levels(log_truth: Array, log_draws: Array, rng: np.random.Generator,
+                   keep: NDArray[np.bool_] | None = None) -> Array:
     """Return the level of the smallest highest-density region that holds the truth.
 
     Args:
         log_truth: (N,) log density of the estimator at the truth.
         log_draws: (N, D) log density of the estimator at its own draws.
         rng: spreads ranks over their steps.
+        keep: (N, D) True where a draw counts; all by default.
 
     Returns:
         (N,) share of the draws of higher density.
     """
-    above = np.sum(log_draws > log_truth[:, None], axis=1)
-    equal = np.sum(log_draws == log_truth[:, None], axis=1)
-    return (above + rng.random(len(above)) * (equal + 1.0)) / (log_draws.shape[1] + 1.0)
-
-
-def tarp_levels(truth: Array, draws: Array, rng: np.random.Generator) -> Array:
-    """Return the probability of the ball about a random point that just reaches the truth.
-
-    The point is the truth of another case, which knows nothing of this one. The levels are uniform for
-    the right posterior, and the converse holds over all points (Lemos et al. 2023, TARP).
-
-    Args:
-        truth: (N, P) in coordinates of comparable scale.
-        draws: (N, D, P) likewise.
-        rng: pairs the cases and spreads ranks over their steps.
-    """
-    point = truth[_other(len(truth), rng)]
-    reach = np.linalg.norm(truth - point, axis=1)
-    distance = np.linalg.norm(draws - point[:, None], axis=2)
-    return (np.sum(distance < reach[:, None], axis=1) + rng.random(len(truth))) / (draws.shape[1] + 1.0)
+    return 1.0 - fractional_ranks(log_truth[:, None], log_draws[..., None], rng, keep)[:, 0]
 
 
 def check_coverage(name: str, levels: Array, level: float = 0.95) -> CoverageCheck:
-    """Judge a whole coverage curve.
+    """Judge a whole coverage curve in the band of `judge_uniform`.
 
     Args:
         name: of the regions.
@@ -86,11 +70,3 @@ def check_coverage(name: str, levels: Array, level: float = 0.95) -> CoverageChe
     """
     return CoverageCheck(name, levels, float(np.mean(levels <= 0.68)),
                          float(np.sqrt(0.68 * 0.32 / len(levels))), judge_uniform(levels, level))
-
-
-def _other(n: int, rng: np.random.Generator) -> NDArray[np.int64]:
-    """Choose another case for every case."""
-    order = rng.permutation(n)
-    other = np.empty(n, np.int64)
-    other[order] = np.roll(order, 1)
-    return other

@@ -8,7 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy.special import logsumexp
 
-__all__ = ["Efficiency", "importance_efficiency", "kish"]
+from emu.inference.reweight import effective_size
+
+__all__ = ["Efficiency", "importance_efficiency"]
 
 Array = NDArray[np.float64]
 
@@ -38,13 +40,6 @@ class Efficiency:
         return self.full * self.draws > 20.0 and max(self.halves) < 2.0 * self.full
 
 
-def kish(log_weight: Array) -> float:
-    """Return the effective number of draws (sum w)^2 / sum w^2 (Kish 1965); zero if all weights are."""
-    if not np.isfinite(log_weight).any():
-        return 0.0
-    return float(np.exp(2.0 * logsumexp(log_weight) - logsumexp(2.0 * log_weight)))
-
-
 def importance_efficiency(log_weight: Array) -> Efficiency:
     """Summarise the log weights of one flare, ln(likelihood prior) - ln q.
 
@@ -52,9 +47,10 @@ def importance_efficiency(log_weight: Array) -> Efficiency:
         log_weight: (N,), minus infinity where the exact posterior is zero.
     """
     half = len(log_weight) // 2
-    halves = kish(log_weight[:half]) / half, kish(log_weight[half:]) / (len(log_weight) - half)
+    first, second = log_weight[:half], log_weight[half:]
+    halves = effective_size(first) / len(first), effective_size(second) / len(second)
     total = logsumexp(log_weight) if np.isfinite(log_weight).any() else -np.inf
     return Efficiency(
-        full=kish(log_weight) / len(log_weight), halves=halves, draws=len(log_weight),
+        full=effective_size(log_weight) / len(log_weight), halves=halves, draws=len(log_weight),
         lost=float(np.mean(~np.isfinite(log_weight))), log_evidence=float(total - np.log(len(log_weight))),
     )

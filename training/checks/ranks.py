@@ -41,7 +41,8 @@ class RankCheck:
         return tuple(n for n, v in zip(self.names, self.single, strict=True) if not v.inside)
 
 
-def fractional_ranks(truth: Array, draws: Array, rng: np.random.Generator) -> Array:
+def fractional_ranks(truth: Array, draws: Array, rng: np.random.Generator,
+                     keep: NDArray[np.bool_] | None = None) -> Array:
     """Rank truths among draws, spread evenly within ties and within a rank's own step.
 
     With D draws from the right posterior the result is uniform between 0 and 1, exactly, for any D.
@@ -50,13 +51,15 @@ def fractional_ranks(truth: Array, draws: Array, rng: np.random.Generator) -> Ar
         truth: (N, P).
         draws: (N, D, P).
         rng: spreads ranks over their steps.
+        keep: (N, D) True where a draw counts; all by default.
 
     Returns:
         (N, P) between 0 and 1.
     """
-    below = np.sum(draws < truth[:, None], axis=1)
-    equal = np.sum(draws == truth[:, None], axis=1)
-    return (below + rng.random(truth.shape) * (equal + 1.0)) / (draws.shape[1] + 1.0)
+    counts = np.ones(draws.shape[:2], bool) if keep is None else keep
+    below = np.sum((draws < truth[:, None]) & counts[..., None], axis=1)
+    equal = np.sum((draws == truth[:, None]) & counts[..., None], axis=1)
+    return (below + rng.random(truth.shape) * (equal + 1.0)) / (counts.sum(axis=1)[:, None] + 1.0)
 
 
 def check_ranks(names: tuple[str, ...], ranks: Array, level: float = 0.95) -> RankCheck:
