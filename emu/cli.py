@@ -5,7 +5,7 @@ Each command only names its options and calls one driver, imported when the comm
 """
 
 from pathlib import Path
-from typing import Annotated, Literal
+from typing import Annotated
 
 import typer
 
@@ -19,14 +19,18 @@ Flares = Annotated[list[Path], typer.Argument(help="Flare tables, or folders of 
 Columns = Annotated[Path | None, typer.Option(help="TOML that maps other people's column names.")]
 Campaign = Annotated[str | None, typer.Option(help="Campaign name, or the path of a campaign's TOML.")]
 Seed = Annotated[int, typer.Option(help="Every random number follows from it.")]
+Workers = Annotated[int, typer.Option(help="Processes.")]
 
 
 @app.command()
 def families() -> None:
-    """List the families of models, shipped and installed."""
-    from emu.report.families import list_families
+    """List the shipped families and the models that other packages brought along."""
+    from emu.families.catalogue import family_names
+    from emu.families.installed import installed_names, model
 
-    finish(list_families())
+    for name in (*family_names(), *installed_names()):
+        found = model(name)
+        typer.echo(f"{name:27} {len(found.parameters)} parameters  {getattr(found, 'description', '')}")
 
 
 @app.command()
@@ -59,25 +63,33 @@ def simulate(
 @app.command()
 def infer(
     flares: Flares,
-    out: Annotated[Path, typer.Option(help="Folder for draws, summary, figures and run.json.")],
-    bundle: Annotated[Path | None, typer.Option(help="Trained bundle; not needed to finish exactly.")] = None,
-    families: Annotated[str | None, typer.Option(help="Families, joined by commas; else all.")] = None,
-    draws: Annotated[int, typer.Option(min=1, help="Draws a flare and family.")] = 1000,
-    finish_by: Annotated[Literal["none", "exact"], typer.Option("--finish", help="Sample exactly.")] = "none",
-    raymap: Annotated[Literal["exact"], typer.Option(help="How rays are found.")] = "exact",
+    out: Annotated[Path, typer.Option(help="Folder of the run: draws, summary, figures, run.json.")],
+    bundle: Annotated[Path | None, typer.Option(help="Trained bundle.")] = None,
+    families: Annotated[str | None, typer.Option(help="Families, joined by commas; all of the bundle.")] = None,
+    draws: Annotated[int, typer.Option(help="Draws a flare and family.")] = 1000,
+    finish_by: Annotated[
+        str, typer.Option("--finish", help="none, or exact: sample the exact likelihood, slowly.")
+    ] = "none",
+    raymap: Annotated[str, typer.Option(help="exact: how rays are found.")] = "exact",
     columns: Columns = None,
-    campaign: Campaign = None,
-    target: Annotated[str | None, typer.Option(help="Target name, or the path of a TOML.")] = None,
+    campaign: Annotated[str | None, typer.Option(help="Without a bundle: campaign name or TOML.")] = None,
+    target: Annotated[str | None, typer.Option(help="Target name or TOML, else the campaign's.")] = None,
     figures: Annotated[bool, typer.Option(help="Draw figures.")] = True,
     likelihood: Annotated[bool, typer.Option(help="Weigh draws by the exact likelihood.")] = True,
-    as_json: Annotated[bool, typer.Option("--json", help="Print a summary as JSON.")] = False,
+    as_json: Annotated[bool, typer.Option("--json", help="Print a summary as JSON on stdout.")] = False,
+    overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace a folder of an earlier run.")] = False,
     seed: Seed = 0,
-    workers: Annotated[int, typer.Option(min=1, help="Processes.")] = 1,
+    workers: Workers = 1,
 ) -> None:
-    """Say what each flare allows under each family, and whether to trust the answer."""
+    """Say what each flare allows under each family, and whether to trust it."""
     from emu.report.answer import answer
 
-    finish(answer(flares, bundle, out))
+    code = answer(
+        flares, bundle, out, families=listed(families), draws=draws, finish=finish_by, raymap=raymap,
+        columns=columns, campaign=campaign, target=target, figures=figures, likelihood=likelihood,
+        as_json=as_json, seed=seed, workers=workers, overwrite=overwrite,
+    )  # fmt: skip
+    finish(code)
 
 
 def main() -> None:
