@@ -23,11 +23,11 @@ _PACKAGE = Path(__file__).resolve().parent
 
 
 def _shipped(kind: str) -> Path:
-    """Return the folder of the shipped configs of a kind: the checkout's own, else the wheel's copy."""
+    """Return the folder of the shipped configs of a kind: the wheel's copy, else the checkout's own."""
     if kind not in KINDS:
         raise ValueError(f"unknown kind of config {kind!r}: one of {', '.join(KINDS)}")
-    checkout = _PACKAGE.parent / "configs"
-    return (checkout if checkout.is_dir() else _PACKAGE / "configs") / kind
+    copy = _PACKAGE / "configs"
+    return (copy if copy.is_dir() else _PACKAGE.parent / "configs") / kind
 
 
 def config_names(kind: str) -> tuple[str, ...]:
