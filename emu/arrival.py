@@ -54,7 +54,8 @@ class _Traced:
 
 def _pick(values: Values, path: Path, index: NDArray[np.int64]) -> dict[str, Array]:
     """Return the values that a path needs for the emitters `index`, each of its shape."""
-    return {name: values[name][index, 0] for name in (*_PATH_VALUES, *path.parameter_names)}
+    names = (*_PATH_VALUES, *path.parameter_names, *(name for name in ("spot_size",) if name in values))
+    return {name: values[name][index, 0] for name in names}
 
 
 def _trace(

@@ -60,10 +60,9 @@ def _points(values: Values, spot_points: int | None) -> tuple[list[Offset], Arra
     """Return the offsets of a spot's points from its centre, which comes first, and their weights."""
     if "spot_size" not in values:
         return [Offset()], np.ones(1)
-    size = values["spot_size"]
-    side = default_side(float(np.max(size))) if spot_points is None else max(1, round(spot_points ** (1.0 / 3.0)))
+    side = default_side(float(np.max(values["spot_size"]))) if spot_points is None else max(1, round(spot_points ** (1.0 / 3.0)))
     offsets, weights = cloud_points(side + 1 - side % 2)
-    return [Offset(x * size, y * size / values["radius"], z * size) for x, y, z in offsets], weights
+    return [Offset(*map(float, offset)) for offset in offsets], weights
 
 
 def assemble(

@@ -73,13 +73,13 @@ class Bundle:
         Raises:
             UserError: the bundle has no such family, or a user's model is not installed.
         """
-        from emu.families.catalogue import family as find_model
         from emu.families.catalogue import parse_family
+        from emu.families.installed import model
 
         entry = self._entry(family)
         if entry["toml"] is not None:
             return Problem(parse_family(entry["toml"], f"{self.path}: family {family}"), self.campaign)
-        return Problem(find_model(entry["model"]), self.campaign)
+        return Problem(model(entry["model"]), self.campaign)
 
     def estimator(self, family: str) -> "NeuralEstimator":
         """Load the estimator of a family.

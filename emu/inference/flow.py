@@ -186,8 +186,9 @@ class WhiteningTransform(Transform):
 
     def _inverse(self, y: Tensor) -> Tensor:
         identity = torch.eye(y.shape[-1], dtype=y.dtype)
-        inverse = torch.linalg.solve_triangular(self.matrix, identity, upper=False)
-        return (inverse @ y.unsqueeze(-1)).squeeze(-1) + self.location
+        inverse: Tensor = torch.linalg.solve_triangular(self.matrix, identity, upper=False)
+        x: Tensor = (inverse @ y.unsqueeze(-1)).squeeze(-1) + self.location
+        return x
 
     def log_abs_det_jacobian(self, x: Tensor, y: Tensor) -> Tensor:
         return self.log_det.expand(x.shape[:-1])

@@ -2,7 +2,7 @@
 
 import math
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import asdict, dataclass
 from typing import Any
 
 from emu.configs import check_keys, number
@@ -73,6 +73,12 @@ class Stream:
         stream._check(where)
         return stream
 
+    def to_table(self) -> dict[str, Any]:
+        """Return the table that `from_table` reads back unchanged."""
+        table = asdict(self)
+        # Where all kinds come together there is nothing to alternate: the key would only distract.
+        return {key: table[key] for key in table if key != "alternate" or self.alternate}
+
     def _check(self, where: str) -> None:
         complaints = (
             (not isinstance(self.alternate, bool), "alternate must be true or false"),
@@ -130,3 +136,7 @@ class Gaps:
         if gaps.length[0] < 0:
             raise UserError(f"{where}: length must not be negative (minutes)")
         return gaps
+
+    def to_table(self) -> dict[str, Any]:
+        """Return the table that `from_table` reads back unchanged."""
+        return asdict(self)

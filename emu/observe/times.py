@@ -66,10 +66,8 @@ def _elapsed(sheet: Sheet) -> tuple[NDArray[np.float64], str]:
     factor = _second_factor(sheet, text)
     number = np.array([_number(sheet, place, cell) for place, cell in enumerate(sheet.time.tolist())])
     stated = _of_flare(sheet, "t_ref")
-    if stated is None:
-        reference = 0.5 * (float(number.min()) + float(number.max()))
-    else:
-        reference = _plain_number(sheet, stated)
+    middle = 0.5 * (float(number.min()) + float(number.max()))
+    reference = middle if stated is None else _plain_number(sheet, stated)
     zero = _of_flare(sheet, "time_zero")
     return (number - reference) * factor, _reference_text(sheet, zero, reference, text, factor)
 

@@ -51,12 +51,13 @@ def draw_album(album: Album) -> Unanswered | None:
         None, or why the curves could not be drawn.
     """
     posterior, rows, scale = album.posterior, album.rows, album.scale
-    problem = opened(album.recipe).problems[posterior.family]
+    toolbox = opened(album.recipe)
+    problem = toolbox.problems[posterior.family]
     title = f"{posterior.flare}, {posterior.family}"
     corner = corner_figure(
         posterior.flat,
         prior_draws(album.recipe, posterior.family),
-        problem.parameters,
+        toolbox.parameters(posterior.family),
         posterior.intervals,
         title,
     )

@@ -6,7 +6,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
-from scipy.special import ndtri
+from scipy.special import ndtr
 
 from emu.families.density import Array
 from emu.observe.rows import KINDS, Rows
@@ -14,8 +14,8 @@ from emu.problem import Problem
 
 __all__ = ["Prediction", "predict", "spread"]
 
-# Standard normal values of equal probability: the noise of a measurement without random numbers.
-_NOISE = ndtri((np.arange(25) + 0.5) / 25)
+_HALVINGS = 50  # of the bracket of a quantile: below rounding
+_REACH = 9.0  # standard deviations that hold every quantile asked for
 
 
 @dataclass(frozen=True)
@@ -79,9 +79,9 @@ def spread(curves: Array, levels: Sequence[float], deviation: Array | None = Non
     Returns:
         (L, T).
     """
-    if deviation is not None:
-        curves = (curves + deviation * _NOISE[:, None, None]).reshape(-1, curves.shape[-1])
-    return np.asarray(np.quantile(curves, levels, axis=0))
+    if deviation is None:
+        return np.asarray(np.quantile(curves, levels, axis=0))
+    return np.stack([_mixture_quantile(curves, deviation, level) for level in levels])
 
 
 def _grid(times: Array, errors: Mapping[str, float]) -> Rows:
@@ -90,3 +90,14 @@ def _grid(times: Array, errors: Mapping[str, float]) -> Rows:
     kind = np.repeat([KINDS.index(k) for k in errors], count).astype(np.int8)
     error = np.repeat(list(errors.values()), count).astype(float)
     return Rows(np.tile(np.asarray(times, float), len(errors)), kind, np.zeros(len(kind)), error)
+
+
+def _mixture_quantile(mean: Array, deviation: Array, level: float) -> Array:
+    """Return the quantile (T,) of equal mixtures of N normals each, by bisection of their distribution."""
+    low = (mean - _REACH * deviation).min(axis=0)
+    high = (mean + _REACH * deviation).max(axis=0)
+    for _ in range(_HALVINGS):
+        middle = 0.5 * (low + high)
+        below = ndtr((middle - mean) / deviation).mean(axis=0) < level
+        low, high = np.where(below, middle, low), np.where(below, high, middle)
+    return np.asarray(0.5 * (low + high))

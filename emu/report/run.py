@@ -138,7 +138,7 @@ def _work(
         unit = toolbox.campaign.flux_unit
         with clock.stage("figures"):
             failed += draw_all(pool, recipe, posteriors, inputs.found, unit, folder / "figures")
-    parameters = {family: toolbox.problems[family].parameters for family in families}
+    parameters = {family: toolbox.parameters(family) for family in families}
     return Outcome(tuple(flares), parameters, posteriors, probabilities, source, (*inputs.skipped, *failed))
 
 

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import hashlib
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cache, partial
 from pathlib import Path
 from typing import Any, Protocol
@@ -17,6 +17,7 @@ import numpy as np
 from emu.configs import config_text
 from emu.errors import UserError
 from emu.families.density import Array
+from emu.families.parameters import Parameter
 from emu.observe.campaign import Campaign
 from emu.observe.rows import RowBatch
 from emu.problem import Problem
@@ -58,6 +59,11 @@ class Toolbox:
     problems: Mapping[str, Problem]
     estimator: Callable[[str], Sampler] | None = None
     probabilities: Callable[[RowBatch], Array] | None = None
+
+    def parameters(self, family: str) -> tuple[Parameter, ...]:
+        """Return the parameters of a family, fluxes in the campaign's unit instead of the word "flux"."""
+        unit, every = self.campaign.flux_unit, self.problems[family].parameters
+        return tuple(replace(p, unit=unit) if p.unit == "flux" else p for p in every)
 
     def chosen(self, families: Sequence[str] | None) -> tuple[str, ...]:
         """Return the families asked for, all where none are named.
@@ -128,16 +134,16 @@ class FromConfigs:
 
     def open(self) -> Toolbox:
         """Read the configs."""
-        from emu.families.catalogue import family
+        from emu.families.installed import model
         from emu.observe.campaign import campaign
 
         season = campaign(self.campaign)
-        models = [family(name) for name in self.families]
-        names = [model.name for model in models]
+        models = [model(name) for name in self.families]
+        names = [each.name for each in models]
         for name in names:
             if names.count(name) > 1:
                 raise UserError(f"family {name!r} is named twice; name it once")
-        return Toolbox(season, {model.name: Problem(model, season) for model in models})
+        return Toolbox(season, {each.name: Problem(each, season) for each in models})
 
     def origin(self) -> dict[str, Any]:
         """Return the names of the configs and the checksums of their texts."""

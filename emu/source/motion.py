@@ -60,11 +60,11 @@ class Motion:
 
 @dataclass(frozen=True)
 class Offset:
-    """Displace one point of a spot from the centre, fixed in emission time: GM/c2, the azimuth in rad."""
+    """Displace one point of a spot from the centre along R, R0 phi and z, in units of the spot's size."""
 
-    cylinder: Array | float = 0.0
-    phi: Array | float = 0.0
-    height: Array | float = 0.0
+    cylinder: float = 0.0
+    around: float = 0.0
+    height: float = 0.0
 
 
 class Path(Protocol):
@@ -96,12 +96,13 @@ def opening_motion(
     start = values["radius"]
     centre = start + opening * time
     turning = rate * circular_frequency(values["spin"], start)
+    size = values.get("spot_size", 0.0)
     shape = np.broadcast_shapes(np.shape(centre), np.shape(time))
     full = np.zeros(shape)
     return Motion(
-        cylinder=centre + offset.cylinder + full,
-        height=height + rise * time + offset.height + full,
-        phi=values["phase"] + turning * start * time / centre + offset.phi + full,
+        cylinder=centre + offset.cylinder * size + full,
+        height=height + rise * time + offset.height * size + full,
+        phi=values["phase"] + turning * start * time / centre + offset.around * size / start + full,
         cylinder_rate=opening + full,
         height_rate=rise + full,
         phi_rate=turning * (start / centre) ** 2 + full,

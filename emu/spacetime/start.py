@@ -13,7 +13,7 @@ import math
 import numpy as np
 from numba import njit
 
-__all__ = ["caustic_centres", "start_rays", "zero_spin_table"]
+__all__ = ["caustic_centres", "critical_impact", "start_rays", "zero_spin_table"]
 
 _N_U, _N_PSI = 40, 64
 _S_LOW, _S_HIGH = math.sqrt(1e-3), math.sqrt(0.42)
@@ -109,7 +109,7 @@ def _look_up(table, u, psi, order):
 
 
 @njit(cache=True)
-def _critical_impact(a, cos_i, sin_i, right, up):
+def critical_impact(a, cos_i, sin_i, right, up):
     """Return the distance of the critical curve from the screen's origin in the direction (right, up).
 
     There the radial potential u'² = 1 + (a² − λ² − η)u² + 2(η + (λ − a)²)u³ − a²ηu⁴ has a double root in u
@@ -166,7 +166,7 @@ def start_rays(table, spin, cos_i, sin_i, u, n, order, given, out):
             right, up = -right, -up
         behind = 0.5 * (1.0 - math.cos(min(psi, math.pi)))
         near = min(1.0, (_CRITICAL / b) ** 4)
-        b += (_critical_impact(a, c, s, right, up) - _CRITICAL) * behind * 0.5 * (1.0 + near)
+        b += (critical_impact(a, c, s, right, up) - _CRITICAL) * behind * 0.5 * (1.0 + near)
         out[k, 0], out[k, 1], out[k, 2] = b * right, b * up, psi / b
 
 
