@@ -200,7 +200,5 @@ def _manifest(folder: Path) -> Mapping[str, Any]:
     if not isinstance(found, int) or found > FORMAT:
         raise UserError(f"{folder}: bundle of format {found}, this program reads {FORMAT}; update emu-flares")
     if found < FORMAT:
-        raise UserError(
-            f"{folder}: bundle of the old format {found}, this program reads {FORMAT}; publish anew"
-        )
+        raise UserError(f"{folder}: bundle of the old format {found}, this program reads {FORMAT}; publish anew")
     return manifest

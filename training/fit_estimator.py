@@ -8,6 +8,8 @@ from typing import Any
 import torch
 from torch import Tensor, nn
 
+from emu.families.catalogue import family_text
+from emu.families.family import Family
 from emu.inference.network import Network
 from training.files import digest
 from training.loop import Outcome, Task, train
@@ -50,11 +52,13 @@ def fit(
     chosen = recipe(config)
     count = chosen.steps(minutes, steps)
     material = load_material(set_path, chosen.held_out, chosen.embedding.nodes)
+    model = material.problem.model
     task = estimator_task(material, chosen, seed, digest(set_path / "set.json"))
     outcome = train(task, chosen.loop, count, out / "checkpoint.safetensors", report)
     record = {
         "family": material.problem.name,
         "model": material.stored.layout.model,
+        "toml": family_text(model) if isinstance(model, Family) else None,
         "campaign": material.stored.layout.campaign,
         "parameters": list(material.problem.prior.names),
         "network": network_of(material, chosen).table(),

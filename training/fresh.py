@@ -11,7 +11,7 @@ from emu.families.parameters import Parameter
 from emu.observe.rows import RowBatch
 from emu.problem import Problem
 from training.simulate import STANDARD
-from training.store import Layout, TrainingSet
+from training.store import TrainingSet
 
 __all__ = ["FreshFlares", "StoredCurves", "interpolate"]
 
@@ -20,40 +20,33 @@ Array = NDArray[np.float64]
 
 @numba.njit(cache=True)
 def interpolate(
-    curves: NDArray[np.float32], which: NDArray[np.int64], half_span: float, times: Array
+    nodes: NDArray[np.float32], curves: NDArray[np.float32], which: NDArray[np.int64], times: Array
 ) -> Array:
-    """Interpolate curves on uniform nodes by the cubic through the four nearest (Lagrange).
+    """Interpolate curves by the cubic through the four nearest nodes (Lagrange).
 
     Args:
-        curves: (N, T, K) float32, T >= 4, nodes from -half_span to half_span.
+        nodes: (N, T) float32 ascending times, T >= 4.
+        curves: (N, T, K) float32.
         which: (B,) number of the curve of each flare.
-        half_span: GM/c^3.
-        times: (B, R), GM/c^3; clipped to the nodes.
+        times: (B, R); beyond the nodes the last cubic is continued.
 
     Returns:
         (K, B, R) float64.
     """
-    nodes, kinds = curves.shape[1], curves.shape[2]
     flares, rows = times.shape
-    out = np.empty((kinds, flares, rows))
+    out = np.zeros((curves.shape[2], flares, rows))
     for b in range(flares):
-        curve = curves[which[b]]
+        node, curve = nodes[which[b]], curves[which[b]]
         for r in range(rows):
-            place = (times[b, r] / half_span + 1.0) * (0.5 * (nodes - 1))
-            place = min(max(place, 0.0), nodes - 1.0)
-            first = min(max(int(place) - 1, 0), nodes - 4)
-            x = place - first
-            w0 = -(x - 1.0) * (x - 2.0) * (x - 3.0) / 6.0
-            w1 = x * (x - 2.0) * (x - 3.0) / 2.0
-            w2 = -x * (x - 1.0) * (x - 3.0) / 2.0
-            w3 = x * (x - 1.0) * (x - 2.0) / 6.0
-            for k in range(kinds):
-                out[k, b, r] = (
-                    w0 * curve[first, k]
-                    + w1 * curve[first + 1, k]
-                    + w2 * curve[first + 2, k]
-                    + w3 * curve[first + 3, k]
-                )
+            place = np.searchsorted(node, times[b, r]) - 2
+            first = min(max(place, 0), len(node) - 4)
+            for i in range(first, first + 4):
+                weight = 1.0
+                for j in range(first, first + 4):
+                    if j != i:
+                        weight *= (times[b, r] - node[j]) / (float(node[i]) - float(node[j]))
+                for k in range(out.shape[0]):
+                    out[k, b, r] += weight * curve[i, k]
     return out
 
 
@@ -63,14 +56,12 @@ class StoredCurves:
 
     Args:
         model: whose curves are stored.
-        layout: kinds and nodes.
-        stored: (N, T, K) float32, all stored curves.
+        stored: the set.
         which: (B,) the stored flare of each row of theta.
     """
 
     model: Model
-    layout: Layout
-    stored: NDArray[np.float32]
+    stored: TrainingSet
     which: NDArray[np.int64]
 
     @property
@@ -86,7 +77,7 @@ class StoredCurves:
     @property
     def kinds(self) -> tuple[str, ...]:
         """Return which curves are stored."""
-        return self.layout.kinds
+        return self.stored.layout.kinds
 
     @property
     def standard_frame(self) -> bool:
@@ -102,7 +93,7 @@ class StoredCurves:
         return self.model.scatter(theta)
 
     def curves(self, theta: Array, times: Array) -> dict[str, Array]:
-        """Interpolate the stored curves (PHYSICS of the sky: axis_angle turns, brightness scales).
+        """Interpolate the stored curves (axis_angle turns, brightness scales).
 
         Args:
             theta: (B, P), one row for each of `which`.
@@ -111,8 +102,8 @@ class StoredCurves:
         Returns:
             kind -> (B, T).
         """
-        made = interpolate(self.stored, self.which, self.layout.half_span, times)
-        curves = dict(zip(self.layout.kinds, made, strict=True))
+        made = interpolate(self.stored.times, self.stored.curves, self.which, times)
+        curves = dict(zip(self.kinds, made, strict=True))
         if not self.standard_frame:
             return curves
         column = {parameter.name: place for place, parameter in enumerate(self.parameters)}
@@ -157,7 +148,7 @@ class FreshFlares:
             theta (B, P) of the problem, and what was measured.
         """
         theta = self._theta(which, rng)
-        model = StoredCurves(self.problem.model, self.stored.layout, self.stored.curves, which)
+        model = StoredCurves(self.problem.model, self.stored, which)
         schedule = self.problem.campaign.draw(len(which), rng)
         return theta, Problem(model, self.problem.campaign).simulate(theta, schedule, rng)[0]
 

@@ -137,7 +137,7 @@ def train(
     identity = f"{task.identity}\nsteps {steps}\n{options}"
     outcome = _resume(checkpoint, identity, task.module, averaged, optimizer)
     started, spent = time.process_time(), outcome.cpu_seconds
-    while outcome.step < steps and outcome.step - outcome.best_step <= options.patience * options.every:
+    while outcome.step < steps and outcome.step - outcome.best_step < options.patience * options.every:
         _step(task, averaged, optimizer, options, outcome.step, steps)
         outcome.step += 1
         if outcome.step % options.every == 0 or outcome.step == steps:

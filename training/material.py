@@ -8,7 +8,7 @@ import torch
 from torch import Tensor
 
 from emu.errors import UserError
-from emu.families.catalogue import family
+from emu.families.installed import model
 from emu.inference.embedding import Grid, grid_rows
 from emu.observe.campaign import parse_campaign
 from emu.observe.rows import KINDS
@@ -80,7 +80,7 @@ def load_material(set_path: Path, held_out: int, nodes: int) -> Material:
     """
     stored = TrainingSet.load(set_path)
     layout = stored.layout
-    problem = Problem(family(layout.model), parse_campaign(layout.campaign, f"{set_path}: its campaign"))
+    problem = Problem(model(layout.model), parse_campaign(layout.campaign, f"{set_path}: its campaign"))
     if model_text(problem.model) != layout.definition:
         raise UserError(f"{set_path}: the definition of {layout.model} has changed since; simulate anew")
     return Material(problem, stored, held_out, Grid(measured_kinds(problem), nodes, layout.half_span))

@@ -12,20 +12,24 @@ from rich.progress import BarColumn, MofNCompleteColumn, Progress, TextColumn, T
 
 from emu import __version__
 from emu.errors import UserError
-from emu.families.catalogue import family as find_model
 from emu.families.catalogue import family_text
 from emu.families.family import Family
+from emu.families.installed import model
 from emu.families.model import Model
 from emu.observe.campaign import campaign as read_campaign
 from emu.problem import Problem
+from training.nodes import Refined, refine
 from training.processes import in_processes
 from training.store import Layout, create, missing_chunks, write_chunk
+
+Array = NDArray[np.float64]
 
 __all__ = ["STANDARD", "layout_of", "model_text", "simulate", "simulate_problem"]
 
 CHUNK = 500  # flares; part of the configuration: another chunk size would give other draws
-NODES = 256
+NODES = (96, 64)
 STANDARD = {"axis_angle": 0.0, "brightness": 1.0}
+_FINE = 0.1  # a curve is coarse where interpolation may err by more than this, in units of the best error
 _MOST_REDRAWN = 0.2  # a model that fails more often than this is broken, not unlucky
 
 
@@ -46,14 +50,14 @@ def simulate(family: str, campaign: str, out: Path, flares: int, seed: int, work
     Raises:
         UserError: another set stands there, or the disk is too small.
     """
-    joined = Problem(find_model(family), read_campaign(campaign))
+    joined = Problem(model(family), read_campaign(campaign))
     layout = layout_of(joined, flares, seed, family)
     simulate_problem(joined, layout, out, workers)
     return out
 
 
 def layout_of(
-    problem: Problem, flares: int, seed: int, source: str | None = None, nodes: int = NODES
+    problem: Problem, flares: int, seed: int, source: str | None = None, nodes: tuple[int, int] = NODES
 ) -> Layout:
     """Describe the set that `simulate_problem` will make.
 
@@ -62,7 +66,7 @@ def layout_of(
         flares: number of flares.
         seed: of the set.
         source: name or path by which the model is found again; its own name where None.
-        nodes: number of time nodes.
+        nodes: uniform time nodes, and further ones where a curve needs them.
     """
     model = problem.model
     needed = {kind for stream in problem.campaign.streams for kind in stream.kinds}
@@ -70,15 +74,17 @@ def layout_of(
     needed |= {"u", "flux"} if "U" in needed else set()
     needed |= {"q", "u"} if needed & {"q", "u"} else set()  # they mix when the axis angle turns
     needed |= {"east", "north"} if needed & {"east", "north"} else set()
+    kinds = tuple(kind for kind in model.kinds if kind in needed)
     return Layout(
         model=source or model.name,
         definition=model_text(model),
         campaign=problem.campaign.text,
         version=__version__,
         parameters=tuple(parameter.name for parameter in model.parameters),
-        kinds=tuple(kind for kind in model.kinds if kind in needed),
+        kinds=kinds,
         half_span=problem.campaign.half_span,
         nodes=nodes,
+        scale=tuple(_best_error(problem, kind) for kind in kinds),
         flares=flares,
         chunk=CHUNK,
         seed=seed,
@@ -139,31 +145,58 @@ def _shown(done: Iterable[int], layout: Layout, todo: list[int]) -> Iterator[int
         for finished, failures in enumerate(done, 1):
             elapsed = progress.tasks[task].elapsed or 1.0
             flares = sum(layout.size(chunk) for chunk in todo[:finished])
-            progress.update(
-                task, completed=layout.flares - absent + flares, rate=f"{flares / elapsed:.0f} flares/s"
-            )
+            progress.update(task, completed=layout.flares - absent + flares, rate=f"{flares / elapsed:.0f} flares/s")
             yield failures
 
 
 def _make_chunk(model: Model, problem: Problem, layout: Layout, out: Path, chunk: int) -> int:
     """Draw, compute and write one chunk; return how many curves failed."""
     rng = np.random.default_rng(np.random.SeedSequence(layout.seed, spawn_key=(chunk,)))
-    size = layout.size(chunk)
-    theta = np.empty((0, len(layout.parameters)))
-    curves = np.empty((0, layout.nodes, len(layout.kinds)), np.float32)
-    failed: list[list[float]] = []
-    while len(theta) < size:
-        drawn = _standard(model, problem.prior.sample(size - len(theta), rng)[:, : len(layout.parameters)])
-        made, good = _curves(model, drawn, layout)
-        theta, curves = np.concatenate([theta, drawn[good]]), np.concatenate([curves, made[good]])
+    parts, failed, have = [], [], 0
+    while have < layout.size(chunk):
+        drawn = problem.prior.sample(layout.size(chunk) - have, rng)[:, : len(layout.parameters)]
+        drawn = _standard(model, drawn)
+        made = _refined(model, drawn, layout)
+        good = (made.failures == 0) & np.isfinite(made.curves).all(axis=(1, 2))
+        parts.append((drawn[good], made.times[good], made.curves[good].astype(np.float32), made.error[good]))
         failed += drawn[~good].tolist()
-        if len(failed) > max(10.0, _MOST_REDRAWN * size):
+        have += int(good.sum())
+        if len(failed) > max(10.0, _MOST_REDRAWN * layout.size(chunk)):
             raise RuntimeError(f"{layout.model}: too many curves fail in chunk {chunk}: {failed[0]}")
-    write_chunk(out, layout, chunk, theta, curves, {"failures": len(failed), "failed": failed})
+    theta, times, curves, error = (np.concatenate(arrays) for arrays in zip(*parts, strict=True))
+    record = {"failures": len(failed), "failed": failed, "coarse": int((error > _FINE).sum())}
+    write_chunk(out, layout, chunk, (theta, times, curves), record)
     return len(failed)
 
 
-def _standard(model: Model, theta: NDArray[np.float64]) -> NDArray[np.float64]:
+def _refined(model: Model, theta: Array, layout: Layout) -> Refined:
+    """Compute the curves of theta (N, P) on nodes that follow their shape."""
+
+    def evaluate(times: Array) -> tuple[Array, NDArray[np.int64]]:
+        made = model.curves(theta, times)
+        failures = made.get("failures", np.zeros(len(theta)))
+        return np.stack([made[kind] for kind in layout.kinds], axis=-1), np.asarray(failures, np.int64)
+
+    return refine(evaluate, len(theta), layout.half_span, np.array(layout.scale), layout.nodes)
+
+
+def _best_error(problem: Problem, kind: str) -> float:
+    """Return the smallest error a campaign gives a kind, in the unit of its stored curve."""
+    streams = problem.campaign.streams
+    flux = [stream.error[0] for stream in streams if {"flux", "Q", "U"} & set(stream.kinds)]
+    same = [stream.error[0] for stream in streams if kind in stream.kinds]
+    if kind == "flux":
+        # Stored at brightness 1: an error in the curve grows with the brightness.
+        most = [p.bounds[1] for p in problem.model.parameters if p.name == "brightness"]
+        return min(flux) / (most[0] if problem.model.standard_frame and most else 1.0)
+    if kind in ("east", "north"):
+        return min(error for s in streams if kind in s.kinds for error in s.error) / (
+            problem.campaign.target.length_unit
+        )
+    return min(same or flux)
+
+
+def _standard(model: Model, theta: Array) -> Array:
     """Set axis_angle to 0 and brightness to 1 where the model says that they act exactly as told."""
     theta = theta.copy()
     if model.standard_frame:
@@ -171,13 +204,3 @@ def _standard(model: Model, theta: NDArray[np.float64]) -> NDArray[np.float64]:
             if parameter.name in STANDARD:
                 theta[:, column] = STANDARD[parameter.name]
     return theta
-
-
-def _curves(
-    model: Model, theta: NDArray[np.float64], layout: Layout
-) -> tuple[NDArray[np.float32], NDArray[np.bool_]]:
-    made = model.curves(theta, layout.times)
-    stacked = np.stack([made[kind] for kind in layout.kinds], axis=-1)
-    failures = np.asarray(made.get("failures", np.zeros(len(theta), np.int64)))
-    good = (failures == 0) & np.isfinite(stacked).all(axis=(1, 2))
-    return stacked.astype(np.float32), good

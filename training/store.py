@@ -21,6 +21,7 @@ from training.files import digest, write_atomically
 __all__ = ["Layout", "TrainingSet", "create", "missing_chunks", "write_chunk"]
 
 FORMAT = 1
+_ARRAYS = {"theta": "float64", "times": "float32", "curves": "float32"}
 
 
 @dataclass(frozen=True)
@@ -35,7 +36,8 @@ class Layout:
         parameters: names of the model's P parameters.
         kinds: K curves that are stored.
         half_span: nodes cover -half_span to half_span, GM/c^3.
-        nodes: number T of uniform time nodes.
+        nodes: uniform time nodes of every curve, and further ones where it needs them; T in all.
+        scale: the error of each kind that matters, in the unit of its curve; it decides where nodes go.
         flares: number N of flares.
         chunk: flares a chunk.
         seed: seed of the set; each chunk has a stream of its own.
@@ -48,7 +50,8 @@ class Layout:
     parameters: tuple[str, ...]
     kinds: tuple[str, ...]
     half_span: float
-    nodes: int
+    nodes: tuple[int, int]
+    scale: tuple[float, ...]
     flares: int
     chunk: int
     seed: int
@@ -59,14 +62,10 @@ class Layout:
         return -(-self.flares // self.chunk)
 
     @property
-    def times(self) -> NDArray[np.float64]:
-        """Return the time nodes (T,), GM/c^3."""
-        return np.linspace(-self.half_span, self.half_span, self.nodes)
-
-    @property
     def bytes(self) -> int:
         """Return the size of the arrays on disk."""
-        return self.chunks * self.chunk * (8 * len(self.parameters) + 4 * self.nodes * len(self.kinds))
+        flare = 8 * len(self.parameters) + 4 * sum(self.nodes) * (1 + len(self.kinds))
+        return self.chunks * self.chunk * flare
 
     def size(self, chunk: int) -> int:
         """Return how many flares a chunk holds: the last may be short."""
@@ -91,9 +90,7 @@ class Layout:
             raise UserError(f"{folder}: no training set; make one with emu-train simulate") from problem
         if found != FORMAT:
             raise UserError(f"{folder}: a set of format {found}, this program reads {FORMAT}; make anew")
-        return cls(
-            **{key: tuple(value) if isinstance(value, list) else value for key, value in table.items()}
-        )
+        return cls(**{key: tuple(value) if isinstance(value, list) else value for key, value in table.items()})
 
 
 @dataclass(frozen=True)
@@ -104,12 +101,14 @@ class TrainingSet:
         layout: what it is.
         theta: (N, P) float64 model parameters; axis_angle 0 and brightness 1 where the model has a
             standard frame.
+        times: (N, T) float32 time nodes, GM/c^3.
         curves: (N, T, K) float32 noiseless curves.
         records: what `write_chunk` was given, one a chunk.
     """
 
     layout: Layout
     theta: NDArray[np.float64]
+    times: NDArray[np.float32]
     curves: NDArray[np.float32]
     records: tuple[dict[str, Any], ...]
 
@@ -129,7 +128,7 @@ class TrainingSet:
             )
         group = zarr.open_group(folder / "set.zarr", mode="r")
         records = tuple(json.loads(_sidecar(folder, chunk).read_text()) for chunk in range(layout.chunks))
-        return cls(layout, np.asarray(group["theta"][:]), np.asarray(group["curves"][:]), records)
+        return cls(layout, *(np.asarray(group[name][:]) for name in _ARRAYS), records)
 
 
 def create(folder: Path, layout: Layout) -> None:
@@ -142,23 +141,21 @@ def create(folder: Path, layout: Layout) -> None:
     if described.exists():
         found = Layout.read(folder)
         if found != layout:
-            other = [
-                key for key in layout.__dataclass_fields__ if getattr(found, key) != getattr(layout, key)
-            ]
-            raise UserError(
-                f"{folder}: holds a set with another {', '.join(other)}; give another --out, or delete it"
-            )
+            other = [key for key in layout.__dataclass_fields__ if getattr(found, key) != getattr(layout, key)]
+            raise UserError(f"{folder}: holds a set with another {', '.join(other)}; give another --out, or delete it")
     else:
         write_atomically(described, layout.text().encode())
     # Metadata are the same bytes every time, so that it does no harm to write them again after a kill.
     group = zarr.open_group(folder / "set.zarr", mode="a", zarr_format=3)
-    for name, shape, dtype in (
-        ("theta", (layout.flares, len(layout.parameters)), "float64"),
-        ("curves", (layout.flares, layout.nodes, len(layout.kinds)), "float32"),
-    ):
+    per_flare = ((len(layout.parameters),), (sum(layout.nodes),), (sum(layout.nodes), len(layout.kinds)))
+    for (name, dtype), shape in zip(_ARRAYS.items(), per_flare, strict=True):
         if name not in group:
             group.create_array(
-                name, shape=shape, dtype=dtype, chunks=(layout.chunk, *shape[1:]), compressors=None
+                name,
+                shape=(layout.flares, *shape),
+                chunks=(layout.chunk, *shape),
+                dtype=dtype,
+                compressors=None,
             )
 
 
@@ -166,8 +163,7 @@ def write_chunk(
     folder: Path,
     layout: Layout,
     chunk: int,
-    theta: NDArray[np.float64],
-    curves: NDArray[np.float32],
+    arrays: tuple[NDArray[np.float64], NDArray[np.float32], NDArray[np.float32]],
     record: dict[str, Any],
 ) -> None:
     """Write one chunk, then its checksum and record.
@@ -176,15 +172,14 @@ def write_chunk(
         folder: of the set.
         layout: of the set.
         chunk: its number.
-        theta: (C, P).
-        curves: (C, T, K).
+        arrays: theta (C, P), times (C, T) and curves (C, T, K).
         record: what else is to be known about it; plain JSON.
     """
     _sidecar(folder, chunk).unlink(missing_ok=True)
     group = zarr.open_group(folder / "set.zarr", mode="r+")
     part = slice(chunk * layout.chunk, chunk * layout.chunk + layout.size(chunk))
-    group["theta"][part] = theta
-    group["curves"][part] = curves
+    for name, array in zip(_ARRAYS, arrays, strict=True):
+        group[name][part] = array
     text = json.dumps({"sha256": _checksum(folder, chunk)} | record, sort_keys=True)
     write_atomically(_sidecar(folder, chunk), text.encode())
 
@@ -207,7 +202,7 @@ def _sidecar(folder: Path, chunk: int) -> Path:
 
 
 def _checksum(folder: Path, chunk: int) -> str:
-    """Return the checksum of a chunk's two files, at the places that the zarr v3 specification gives them."""
-    arrays = folder / "set.zarr"
-    files = arrays / f"theta/c/{chunk}/0", arrays / f"curves/c/{chunk}/0/0"
+    """Return the checksum of a chunk's files, at the places that the zarr v3 specification gives them."""
+    places = f"theta/c/{chunk}/0", f"times/c/{chunk}/0", f"curves/c/{chunk}/0/0"
+    files = (folder / "set.zarr" / place for place in places)
     return hashlib.sha256("".join(map(digest, files)).encode()).hexdigest()

@@ -214,8 +214,7 @@ def build_flow(features: int, context: int, choices: FlowChoices) -> Flow:
     # Which features meet in which coupling is part of the design, hence the fixed seed.
     shuffle = torch.Generator().manual_seed(0)
     couplings = [
-        Coupling(torch.randperm(features, generator=shuffle), context, choices)
-        for _ in range(choices.transforms)
+        Coupling(torch.randperm(features, generator=shuffle), context, choices) for _ in range(choices.transforms)
     ]
     base = UnconditionalDistribution(
         zuko.distributions.DiagNormal, torch.zeros(features), torch.ones(features), buffer=True
