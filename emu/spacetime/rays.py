@@ -2,8 +2,7 @@
 
 A solved ray must belong to the image that was asked for: its parity (the sign of the magnification's determinant)
 alternates with the order, and its swept angle lies between order·π and (order + 1)·π up to the drag's second order.
-Rays for which the start led elsewhere go round by continuation: the source is moved away from the caustic, solved
-there, and brought back in small steps.
+Rays for which the start led elsewhere go round by continuation in spin and place.
 """
 
 from __future__ import annotations
@@ -25,7 +24,8 @@ Array = NDArray[np.float64]
 Flags = NDArray[np.bool_]
 _NEWTON_STEPS = 14
 _CONTINUATION_STEPS = 24
-_SAFE_ANGLE = 1.2  # radians from the caustic, where the plain start does not fail
+_SAFE_ANGLE = 1.2  # rad from the caustic
+_SLOW = 0.4  # share of the spin at which the plain start does not fail there
 _SWEPT_SLACK = 0.5
 
 
@@ -77,26 +77,50 @@ def _moved(n: Array, centre: Array, angle: Array) -> Array:
     return np.asarray(np.cos(angle)[:, None] * centre + np.sin(angle)[:, None] * across)
 
 
+def _follow(rays: Array, before: Array, places: tuple[Array, ...], order: int) -> tuple[Array, Flags]:
+    """Solve at the next place of a continuation, from the last two solutions continued.
+
+    Args:
+        rays: (N, 9) the last solution, replaced; its start columns are kept where none is found.
+        before: (N, 3) the start columns of the solution before it.
+        places: spin, cos i, sin i, r, n.
+
+    Returns:
+        The start columns of the last solution and which rays were found.
+    """
+    last = rays[:, :3].copy()
+    rays[:, :3] += last - before
+    good = solve_newton(*places, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
+    rays[~good, :3] = last[~good]
+    return last, good
+
+
 def _continue(spin: Array, cos_i: Array, sin_i: Array, r: Array, n: Array, order: int) -> tuple[Array, Flags]:
-    """Solve far from the caustic and bring the sources back in steps of equal ratio of the distance to it."""
+    """Find rays the long way round: slow spin far from the caustic, then the true spin, then the true place.
+
+    The source keeps its distance from the horizon and its angle to the caustic's centre while the spin grows; then it
+    is brought back to its place in steps of equal ratio of that angle.
+    """
     centre = caustic_centres(_table(), spin, cos_i, sin_i, 1.0 / r, order)
     target = np.arccos(np.clip(np.sum(n * centre, axis=1), -1.0, 1.0))
     far = np.maximum(target, _SAFE_ANGLE)
-    rays = np.zeros((len(r), 9))
-    sources = _moved(n, centre, far)
-    begin = np.full((len(r), 3), np.nan)
-    start_rays(_table(), spin, cos_i, sin_i, 1.0 / r, sources, order, begin, rays[:, :3])
-    good = solve_newton(spin, cos_i, sin_i, r, sources, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
+    outside = r - 1.0 - np.sqrt(1.0 - spin**2)
+    rays, before = np.zeros((len(r), 9)), np.zeros((len(r), 3))
+    for step in range(_CONTINUATION_STEPS + 1):
+        a = spin * (1.0 - (1.0 - _SLOW) * (1.0 - step / _CONTINUATION_STEPS) ** 2)
+        radius = outside + 1.0 + np.sqrt(1.0 - a**2)
+        sources = _moved(n, caustic_centres(_table(), a, cos_i, sin_i, 1.0 / radius, order), far)
+        if step == 0:
+            begin = np.full((len(r), 3), np.nan)
+            start_rays(_table(), a, cos_i, sin_i, 1.0 / radius, sources, order, begin, rays[:, :3])
+            before = rays[:, :3].copy()
+        before, good = _follow(rays, before, (a, cos_i, sin_i, radius, sources), order)
     before = rays[:, :3].copy()
     for step in range(1, _CONTINUATION_STEPS + 1):
         share = step / _CONTINUATION_STEPS
         sources = n if step == _CONTINUATION_STEPS else _moved(n, centre, far ** (1 - share) * target**share)
-        here = rays[:, :3].copy()
-        if step > 1:
-            rays[:, :3] += here - before
-        before = here
-        good &= solve_newton(spin, cos_i, sin_i, r, np.ascontiguousarray(sources), rays, _NEWTON_STEPS)
-    return rays, good & _is_image(rays, order, _SWEPT_SLACK)
+        before, good = _follow(rays, before, (spin, cos_i, sin_i, r, sources), order)
+    return rays, good
 
 
 def solve_rays(
