@@ -160,8 +160,6 @@ def _weighed(found: Posterior, problem: Problem, rows: Rows) -> Posterior:
     value[allowed] = weights.log_posterior[allowed] - log_prior[allowed]
     with np.errstate(divide="ignore"):  # a draw that the posterior forbids weighs nothing
         log_weight = np.log(weights.weight)
-    # Standard error of the logarithm of a mean of weights, from their effective number (delta method).
-    error = np.sqrt(1.0 / weights.ess - 1.0 / len(log_q)) if weights.ess > 0.0 else np.inf
     return replace(
         found,
         stats={**found.stats, "log_likelihood": value[None], "log_weight": log_weight[None]},
@@ -169,9 +167,19 @@ def _weighed(found: Posterior, problem: Problem, rows: Rows) -> Posterior:
         khat=weights.khat,
         efficiency=weights.efficiency,
         log_evidence=weights.log_evidence,
-        log_evidence_error=float(error),
+        log_evidence_error=_evidence_error(weights.ess, len(log_q)),
         unsolved=int(np.count_nonzero(allowed & np.isneginf(value))),
     )
+
+
+def _evidence_error(ess: float, count: int) -> float:
+    """Return the standard error of ln(mean weight): the delta method, with Kish's effective number.
+
+    The relative variance of N weights is N / ess - 1, that of their mean a factor N less.
+    """
+    if ess <= 0.0:
+        return float("inf")
+    return float(np.sqrt(max(1.0 / ess - 1.0 / count, 0.0)))  # rounding may take ess beyond the count
 
 
 def _sampled(

@@ -24,9 +24,9 @@ def toy_problem(family: str = "toy-slow") -> Problem:
 
 @dataclass(frozen=True)
 class ToyRecipe:
-    """Open estimators that know the exact posterior, or a wrong one, and exact family probabilities."""
+    """Open estimators a little wider than the exact posterior, or wrong, and exact family probabilities."""
 
-    widen: float = 1.0
+    widen: float = 1.2
     shift: float = 0.0
 
     def open(self) -> Toolbox:
@@ -58,8 +58,6 @@ def write_toy_flares(path: Path, count: int, seed: int = 1, prefix: str = "f") -
     assert not failures.any()
     names = [f"{prefix}{number:03d}" for number in range(count)]
     season = problem.campaign
-    flares = [
-        Flare.from_rows(batch.rows(i), season.target, name, season.flux_unit) for i, name in enumerate(names)
-    ]
+    flares = [Flare.from_rows(batch.rows(i), season.target, name, season.flux_unit) for i, name in enumerate(names)]
     write_flares(path, flares)
     return dict(zip(names, theta, strict=True))
