@@ -17,7 +17,7 @@ app = command_line("emu", "Posteriors for polarised flares close to a black hole
 
 Flares = Annotated[list[Path], typer.Argument(help="Flare tables, or folders of them.", metavar="FLARES...")]
 Columns = Annotated[Path | None, typer.Option(help="TOML that maps other people's column names.")]
-Campaign = Annotated[str | None, typer.Option(help="Campaign name, or the path of a campaign's TOML.")]
+Target = Annotated[str | None, typer.Option(help="Target, in place of the stated one: name or TOML.")]
 Seed = Annotated[int, typer.Option(help="Every random number follows from it.")]
 Workers = Annotated[int, typer.Option(help="Processes.")]
 
@@ -37,27 +37,28 @@ def families() -> None:
 def inspect(
     flares: Flares,
     columns: Columns = None,
-    campaign: Campaign = None,
-    out: Annotated[Path | None, typer.Option(help="Draw what was read to this PNG or PDF.")] = None,
+    campaign: Annotated[str | None, typer.Option(help="Campaign to compare with: name or TOML.")] = None,
+    target: Target = None,
+    out: Annotated[Path | None, typer.Option(help="Figure: a .png, or a folder for one a flare.")] = None,
 ) -> None:
-    """Show what a table holds, and whether it lies inside the ranges of a campaign."""
-    from emu.report.inspect import inspect_flares
+    """Show what tables hold, and whether it lies within the ranges of a campaign."""
+    from emu.report.inspect import inspect
 
-    finish(inspect_flares(flares, columns=columns, campaign=campaign, out=out))
+    finish(inspect(flares, columns, campaign, target, out))
 
 
 @app.command()
 def simulate(
-    family: Annotated[str, typer.Argument(help="Family name, TOML path, or installed model.")],
+    family: Annotated[str, typer.Argument(help="Family name, the path of a TOML, or an installed model.")],
     campaign: Annotated[str, typer.Argument(help="Campaign name, or the path of a TOML.")],
-    out: Annotated[Path, typer.Option(help="ECSV to write: the flares and their truth.")],
+    out: Annotated[Path, typer.Option(help="Flares and their truth: an .ecsv, or a folder for one a flare.")],
     count: Annotated[int, typer.Option(min=1, help="How many flares.")] = 1,
     seed: Seed = 0,
 ) -> None:
     """Invent flares of a family, as a campaign would have seen them."""
-    from emu.report.invent import invent_flares
+    from emu.report.simulate import simulate
 
-    finish(invent_flares(family, campaign, out=out, count=count, seed=seed))
+    finish(simulate(family, campaign, out, count, seed))
 
 
 @app.command()
@@ -73,7 +74,7 @@ def infer(
     raymap: Annotated[str, typer.Option(help="exact: how rays are found.")] = "exact",
     columns: Columns = None,
     campaign: Annotated[str | None, typer.Option(help="Without a bundle: campaign name or TOML.")] = None,
-    target: Annotated[str | None, typer.Option(help="Target name or TOML, else the campaign's.")] = None,
+    target: Target = None,
     figures: Annotated[bool, typer.Option(help="Draw figures.")] = True,
     likelihood: Annotated[bool, typer.Option(help="Weigh draws by the exact likelihood.")] = True,
     as_json: Annotated[bool, typer.Option("--json", help="Print a summary as JSON on stdout.")] = False,

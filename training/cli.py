@@ -28,6 +28,19 @@ Workers = Annotated[int, typer.Option(min=1, help="Processes; the result does no
 
 
 @app.command()
+def campaign_from(
+    flares: Annotated[list[Path], typer.Argument(metavar="FLARES...", help="Flare tables, or folders.")],
+    out: Annotated[Path, typer.Option(help="TOML to write.")],
+    columns: Annotated[Path | None, typer.Option(help="TOML that translates other people's headers.")] = None,
+    target: Annotated[str | None, typer.Option(help="Target, if the tables name none: name or TOML.")] = None,
+) -> None:
+    """Write the campaign that one's own flares could have come from."""
+    from training.campaign_from import write_campaign
+
+    finish(write_campaign(flares, out, columns, target))
+
+
+@app.command()
 def simulate(
     family: Family,
     campaign: Campaign,
