@@ -93,7 +93,8 @@ def _explain(problem: Exception, cells: Sequence[Sequence[str]], path: str | Pat
         for row, line in enumerate(cells[1:], 1):
             if place < len(line) and not _is_number(line[place]):
                 return f"{path}, row {row}: {named[1]} is {line[place]!r}; give a number"
-    return f"{path}: cannot be read as a table: {problem}"
+    reason = f"its header lacks {problem}" if isinstance(problem, KeyError) else problem
+    return f"{path}: cannot be read as a table: {reason}"
 
 
 def _is_number(cell: str) -> bool:

@@ -17,6 +17,7 @@ __all__ = ["seconds_of"]
 
 _SECONDS_A_DAY = 86400.0
 _ELAPSED = "elapsed"
+_LAST_DATE = 5373484.0  # Julian date of the end of the year 9999, the last that ISO dates can write
 
 
 def seconds_of(sheet: Sheet) -> tuple[NDArray[np.float64], str]:
@@ -121,6 +122,8 @@ def _reference_text(sheet: Sheet, zero: Any, reference: float, unit: str, factor
 
 def _absolute(sheet: Sheet, layout: str | None) -> tuple[NDArray[np.float64], str]:
     times = sheet.time if isinstance(sheet.time, Time) else _read_times(sheet, layout)
+    for place in np.flatnonzero(~_in_calendar(times)):
+        raise sheet.refuse(place, "time is no date from the years -4712 to 9999; check time_format")
     since_first = _difference(times, times[0])
     stated = _of_flare(sheet, "t_ref")
     if stated is None:
@@ -155,13 +158,16 @@ def _scale(sheet: Sheet) -> str:
 def _read_time(sheet: Sheet, cell: Any, layout: str | None, label: str) -> Time:
     if isinstance(cell, datetime.date) and not isinstance(cell, datetime.datetime):
         cell = cell.isoformat()
+    scale = _scale(sheet)
+    wanted = layout or "an ISO date such as 2031-05-04T21:10:00"
+    said = f"{sheet.where}: {label} is {str(cell)!r}, which is not {wanted}"
     try:
-        return _make_time(cell, layout, _scale(sheet))
-    except UserError:
-        raise
-    except Exception:
-        wanted = layout or "an ISO date such as 2031-05-04T21:10:00"
-        raise UserError(f"{sheet.where}: {label} is {str(cell)!r}, which is not {wanted}") from None
+        time = _make_time(cell, layout, scale)
+    except Exception:  # astropy raises many classes for a bad date
+        raise UserError(said) from None
+    if not _in_calendar(time):
+        raise UserError(f"{said} from the years -4712 to 9999")
+    return time
 
 
 def _make_time(cells: Any, layout: str | None, scale: str) -> Time:
@@ -169,6 +175,11 @@ def _make_time(cells: Any, layout: str | None, scale: str) -> Time:
         # Leap seconds of years to come are not known; a flare is too short to notice.
         warnings.simplefilter("ignore")
         return Time(cells, format=layout, scale=scale)
+
+
+def _in_calendar(times: Time) -> NDArray[np.bool_]:
+    days = np.asarray(times.jd1 + times.jd2)
+    return (days >= 0.0) & (days <= _LAST_DATE)
 
 
 def _difference(later: Time, first: Time) -> NDArray[np.float64]:

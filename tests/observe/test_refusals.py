@@ -80,6 +80,7 @@ SPOILT_HEADS = [
     ("# meta: !!omap\n", "# meta: !!omap\n# - time_format: sundial\n", r"time_format 'sundial' is unknown"),
     ("omap\n", "omap\n# - {time_format: mjd}\n# - {time_scale: lunar}\n", r"time_scale 'lunar' is unknown"),
     ("{flux: mJy", "{{flux: mJy", r"cannot be read as a table"),
+    ("# datatype:\n", "# types:\n", r"cannot be read as a table: its header lacks 'datatype'"),
     ("name: error", "name: value", r"cannot be read as a table"),
 ]  # fmt: skip
 
@@ -164,6 +165,14 @@ def test_a_bad_date_names_its_row(tmp_path: Path) -> None:
     text = "time,what,value,error\n" + "".join(f"{date},q,.1,.1\n" for date in dates)
     with pytest.raises(UserError, match="row 2: time is '2031-13-01T00:00:00', which is not an ISO date"):
         read(tmp_path, text, "f.csv")
+
+
+def test_a_date_beyond_all_calendars_names_its_row(tmp_path: Path) -> None:
+    text = "time,what,value,error\n60000,q,.1,.1\n6e25,q,.1,.1\n60001,q,.1,.1\n"
+    with pytest.raises(UserError, match=r"row 2: time is no date .* check time_format"):
+        read(tmp_path, text, "f.csv", 'time_format = "mjd"\n')
+    with pytest.raises(UserError, match=r"t_ref is '6e\+25', which is not mjd from the years"):
+        read(tmp_path, text.replace("6e25", "60000.5"), "f.csv", 'time_format = "mjd"\nt_ref = 6e25\n')
 
 
 def test_a_span_out_of_proportion_for_the_target_of_a_campaign(tmp_path: Path) -> None:
