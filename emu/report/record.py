@@ -65,7 +65,7 @@ def run_record(
         "skipped": [asdict(one) for one in outcome.skipped],
         "counts": {
             "files": len(inputs.checksums),
-            "flares_answered": len(outcome.flares),
+            "flares_answered": len({one.flare for one in every}),
             "skipped": len(outcome.skipped),
             "posteriors": len(every),
             "draws": sum(len(one.flat) for one in every),

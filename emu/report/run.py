@@ -7,12 +7,13 @@ import sys
 import time
 from collections.abc import Iterator, Sequence
 from contextlib import contextmanager
-from dataclasses import asdict, dataclass, field
+from dataclasses import asdict, dataclass, field, replace
 from pathlib import Path
 from typing import Any
 
 from emu import __version__
 from emu.report.inputs import Inputs, screen
+from emu.report.posterior import Unanswered
 from emu.report.probabilities import family_probabilities
 from emu.report.record import run_record
 from emu.report.results import check_free, run_folder, write_record, write_tables
@@ -84,23 +85,26 @@ def run(recipe: Recipe, paths: Sequence[Path], out: Path, wish: Wish) -> int:
     with clock.stage("read"):
         inputs = screen(paths, wish.columns, toolbox.campaign, wish.target)
     complain(inputs.skipped)
-    if not inputs.found:
+    try:
+        outcome = _written(recipe, families, inputs, out, wish, clock)
+    except _NothingAnsweredError as nothing:
         print(f"no flare can be answered; {out} is not written", file=sys.stderr)
         if wish.as_json:
-            _print({"out": None, "flares": {}, "skipped": [asdict(one) for one in inputs.skipped]})
+            _print({"out": None, "flares": {}, "skipped": [asdict(one) for one in nothing.skipped]})
         return SKIPPED
-    with run_folder(out, wish.overwrite) as folder, opened_pool(wish.workers) as pool:
-        outcome = _work(pool, recipe, families, inputs, wish, folder, clock)
-        with clock.stage("write"):
-            tables = {"summary": parameter_table(outcome), "families": family_table(outcome)}
-            write_tables(folder, tables)
-            write_groups(_groups(recipe, outcome, inputs, wish), folder / "draws.zarr")
-        write_record(folder, run_record(outcome, inputs, _options(wish), recipe.origin(), clock.seconds))
     if wish.as_json:
         _print({"out": str(out), "seconds": clock.seconds, **as_json(outcome)})
     else:
         show(outcome, out)
     return SKIPPED if outcome.skipped else 0
+
+
+class _NothingAnsweredError(Exception):
+    """Leave a run that has nothing to write."""
+
+    def __init__(self, skipped: Sequence[Unanswered]) -> None:
+        super().__init__("no flare can be answered")
+        self.skipped = tuple(skipped)
 
 
 @dataclass
@@ -117,29 +121,38 @@ class _Clock:
         self.seconds[name] = time.perf_counter() - began
 
 
-def _work(
-    pool: Pool,
-    recipe: Recipe,
-    families: Sequence[str],
-    inputs: Inputs,
-    wish: Wish,
-    folder: Path,
-    clock: _Clock,
-) -> Outcome:
-    """Sample, judge and draw."""
+def _written(recipe: Recipe, families: Sequence[str], inputs: Inputs, out: Path, wish: Wish, clock: _Clock) -> Outcome:
+    """Answer, draw, and write all of it into the run's folder."""
+    if not inputs.found:
+        raise _NothingAnsweredError(inputs.skipped)
+    with run_folder(out, wish.overwrite) as folder, opened_pool(wish.workers) as pool:
+        outcome = _solved(pool, recipe, families, inputs, wish, clock)
+        if wish.figures:
+            with clock.stage("figures"):
+                unit = opened(recipe).campaign.flux_unit
+                bad = draw_all(pool, recipe, outcome.posteriors, inputs.found, unit, folder / "figures")
+                outcome = replace(outcome, skipped=(*outcome.skipped, *bad))
+        with clock.stage("write"):
+            write_tables(folder, {"summary": parameter_table(outcome), "families": family_table(outcome)})
+            write_groups(_groups(recipe, outcome, inputs, wish), folder / "draws.zarr")
+        write_record(folder, run_record(outcome, inputs, _options(wish), recipe.origin(), clock.seconds))
+    return outcome
+
+
+def _solved(pool: Pool, recipe: Recipe, families: Sequence[str], inputs: Inputs, wish: Wish, clock: _Clock) -> Outcome:
+    """Sample every flare under every family, and judge the families."""
     toolbox = opened(recipe)
     order = Order(wish.draws, wish.seed, wish.exact, wish.likelihood)
     with clock.stage("sample"):
         posteriors, failed = solve_all(pool, recipe, families, inputs.found, order)
+    skipped = (*inputs.skipped, *failed)
+    if not any(posteriors.values()):
+        raise _NothingAnsweredError(skipped)
     with clock.stage("families"):
         flares = {one.name: one.rows for one in inputs.found}
         probabilities, source = family_probabilities(toolbox, flares, posteriors, wish.exact)
-    if wish.figures:
-        unit = toolbox.campaign.flux_unit
-        with clock.stage("figures"):
-            failed += draw_all(pool, recipe, posteriors, inputs.found, unit, folder / "figures")
     parameters = {family: toolbox.parameters(family) for family in families}
-    return Outcome(tuple(flares), parameters, posteriors, probabilities, source, (*inputs.skipped, *failed))
+    return Outcome(tuple(flares), parameters, posteriors, probabilities, source, skipped)
 
 
 def _groups(recipe: Recipe, outcome: Outcome, inputs: Inputs, wish: Wish) -> Iterator[tuple[str, Any]]:
@@ -156,9 +169,7 @@ def _groups(recipe: Recipe, outcome: Outcome, inputs: Inputs, wish: Wish) -> Ite
 
 def _options(wish: Wish) -> dict[str, Any]:
     """Write what was asked for in the words of JSON."""
-    plain = {
-        name: value for name, value in vars(wish).items() if name not in ("columns", "target", "families")
-    }
+    plain = {name: value for name, value in vars(wish).items() if name not in ("columns", "target", "families")}
     return {
         **plain,
         "families": None if wish.families is None else list(wish.families),

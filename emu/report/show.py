@@ -38,7 +38,8 @@ def show(outcome: Outcome, out: Path) -> None:
     console.print(table)
     if len(outcome.flares) > _MOST:
         print(f"and {len(outcome.flares) - _MOST} flares more")
-    print(f"{len(outcome.flares)} flares answered, {len(outcome.skipped)} left out; everything is in {out}")
+    answered = len({posterior.flare for posterior in outcome.ordered()})
+    print(f"{answered} flares answered, {len(outcome.skipped)} answers left out; everything is in {out}")
     print("medians with 68 % intervals, - where the data do not inform")
 
 

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import sys
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from pathlib import Path
 
 from emu.report.inputs import Found
@@ -73,7 +73,12 @@ def solve_all(
 
 
 def draw_all(
-    pool: Pool, recipe: Recipe, posteriors: Answers, flares: Sequence[Found], flux_unit: str, folder: Path
+    pool: Pool,
+    recipe: Recipe,
+    posteriors: Mapping[str, Sequence[Posterior]],
+    flares: Sequence[Found],
+    flux_unit: str,
+    folder: Path,
 ) -> list[Unanswered]:
     """Draw the figures of every posterior into <folder>/<flare>/<family>/.
 

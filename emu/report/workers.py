@@ -4,9 +4,11 @@ from __future__ import annotations
 
 import multiprocessing
 import os
+import threading
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from contextlib import contextmanager
+from multiprocessing.connection import wait
 from typing import TypeVar
 
 __all__ = ["Pool", "opened_pool"]
@@ -57,7 +59,8 @@ def opened_pool(workers: int) -> Iterator[Pool]:
         return
     before = {name: os.environ.get(name) for name in _ONE_THREAD}
     os.environ.update(dict.fromkeys(_ONE_THREAD, "1"))
-    executor = ProcessPoolExecutor(workers, mp_context=multiprocessing.get_context("spawn"))
+    context = multiprocessing.get_context("spawn")
+    executor = ProcessPoolExecutor(workers, mp_context=context, initializer=_follow_parent)
     try:
         yield Pool(executor)
     finally:
@@ -67,3 +70,16 @@ def opened_pool(workers: int) -> Iterator[Pool]:
                 os.environ.pop(name, None)
             else:
                 os.environ[name] = value
+
+
+def _follow_parent() -> None:
+    """End this process when the one that started it has gone, even by a kill that nobody can catch."""
+    parent = multiprocessing.parent_process()
+    if parent is None:
+        return
+
+    def watch() -> None:
+        wait([parent.sentinel])
+        os._exit(1)
+
+    threading.Thread(target=watch, daemon=True).start()

@@ -210,7 +210,7 @@ class Fragile(ToyRecipe):
         class Estimator:
             def sample(self, batch, draws, seed):
                 theta, log_q = whole.estimator("toy-slow").sample(batch, draws, seed)
-                if batch.time.shape[1] % 2 and fault == "error":
+                if (batch.time.shape[1] % 2 and fault == "error") or fault == "every":
                     raise RuntimeError("broken network")
                 if batch.time.shape[1] % 2 and fault == "interrupt":
                     raise KeyboardInterrupt
@@ -244,6 +244,15 @@ def test_a_flare_that_fails_does_not_stop_the_others(
     lost = np.isnan(swing.values).all(axis=(0, 1))
     assert sorted(swing["flare"].values[lost]) == sorted(odd)
     assert np.isfinite(swing.values[..., ~lost]).all()
+
+
+def test_a_run_in_which_every_flare_fails_leaves_no_folder(tmp_path: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    write_toy_flares(tmp_path / "flares.ecsv", 2)
+    wish = replace(SLOW, as_json=True)
+    assert run(Fragile(fault="every"), [tmp_path / "flares.ecsv"], tmp_path / "out", wish) == 3
+    summary = json.loads(capsys.readouterr().out)
+    assert [one["stage"] for one in summary["skipped"]] == ["sample", "sample"]
+    assert [path.name for path in tmp_path.iterdir()] == ["flares.ecsv"]
 
 
 def test_unsolved_rays_are_counted_and_weigh_nothing(tmp_path: Path) -> None:
