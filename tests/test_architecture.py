@@ -131,10 +131,18 @@ def test_training_leaves_the_command_lines_alone(path: Path) -> None:
 
 
 @each_module
-def test_no_module_imports_the_public_face_of_emu(path: Path) -> None:
+def test_no_module_of_emu_imports_its_public_face(path: Path) -> None:
     # `import emu` inside emu would be a circle; the names behind it live in the modules themselves.
-    if path != ROOT / "emu" / "__init__.py":
+    if dotted(path).startswith("emu."):
         assert "emu" not in imported(path), dotted(path)
+
+
+def test_the_function_curves_is_taken_from_emu_only() -> None:
+    # `emu.curves` is a function that lives in a module of the same name: whoever imports the module
+    # first would put it where the function belongs.
+    files = [path for top in ("emu", "training", "tests") for path in (ROOT / top).rglob("*.py")]
+    wrong = [path for path in files if "emu.curves" in imported(path)]
+    assert wrong == [ROOT / "emu" / "__init__.py"], f"use `from emu import curves` in {wrong}"
 
 
 def test_layers_are_noticed_when_broken(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
@@ -185,9 +193,7 @@ def test_no_asserts_pickles_or_drawers(path: Path) -> None:
     assert path.name != "utils.py", f"{path}: name a file by its one concept"
     tree = ast.parse(path.read_text())
     assert not any(isinstance(node, ast.Assert) for node in ast.walk(tree)), f"{path}: raise, do not assert"
-    assert not {"pickle", "cloudpickle", "dill", "joblib"} & set(imported(path)), (
-        f"{path}: nothing is pickled"
-    )
+    assert not {"pickle", "cloudpickle", "dill", "joblib"} & set(imported(path)), f"{path}: nothing is pickled"
 
 
 def test_toml_lives_in_configs_only() -> None:
