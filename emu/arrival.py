@@ -157,6 +157,35 @@ def _first_guess(
     return guess, start
 
 
+def _converge(
+    path: Path, values: Values, offset: Offset, guess: tuple[Array, Array], goal: Array, raymap: RayMap, order: int
+) -> tuple[Array, Array, Array, NDArray[np.bool_]]:
+    """Solve time + delay = goal for M rays from a guess of times (M,) and starts (M, 3), each ray until it is done.
+
+    Args:
+        values: of each ray, (M,).
+
+    Returns:
+        times (M,), columns (8, M), starts (M, 3), failed (M,).
+    """
+    time, start = guess[0].copy(), guess[1].copy()
+    columns, failed = np.zeros((len(COLUMNS), time.size)), np.ones(time.size, bool)
+    active = np.arange(time.size)
+    for _ in range(_MOST_STEPS):
+        picked = {name: value[active] for name, value in values.items()}
+        traced = _trace(path, picked, offset, time[active], raymap, order, start[active])
+        gap = time[active] + traced.columns[2] - goal[active]
+        done = (np.abs(gap) < _TOLERANCE) & ~traced.failed
+        columns[:, active], start[active] = traced.columns, traced.start
+        failed[active] = ~done
+        going = ~done & ~traced.failed
+        time[active[going]] -= (gap / np.maximum(1.0 + traced.delay_rate, 0.05))[going]
+        active = active[going]
+        if len(active) == 0:
+            break
+    return time, columns, start, failed
+
+
 def arrive(
     path: Path,
     values: Values,
@@ -179,31 +208,17 @@ def arrive(
     Returns:
         Emission times to 1e-5 GM/c3 and the rays there; a time that does not converge is a failure.
     """
-    n, count = times.shape
+    n, count = shape = times.shape
     if near is None:
         guess, begin = _first_guess(path, values, offset, times, delay_0, raymap, order)
     else:
         guess, begin = near.time, np.where(near.failed[..., None], np.nan, near.start)
-    time, start = guess.ravel().copy(), begin.reshape(-1, 3).copy()
-    goal, emitter = times.ravel() + np.repeat(delay_0, count), np.repeat(np.arange(n), count)
-    columns, failed = np.zeros((len(COLUMNS), time.size)), np.ones(time.size, bool)
-    active = np.arange(time.size)
-    for _ in range(_MOST_STEPS):
-        picked = _pick(values, path, emitter[active])
-        traced = _trace(path, picked, offset, time[active], raymap, order, start[active])
-        gap = time[active] + traced.columns[2] - goal[active]
-        done = (np.abs(gap) < _TOLERANCE) & ~traced.failed
-        columns[:, active], start[active] = traced.columns, traced.start
-        failed[active] = ~done
-        going = ~done & ~traced.failed
-        time[active[going]] -= (gap / np.maximum(1.0 + traced.delay_rate, 0.05))[going]
-        active = active[going]
-        if len(active) == 0:
-            break
-    motion = path.motion(_pick(values, path, emitter), time, offset)
-    spin, inclination = values["spin"][emitter, 0], values["inclination"][emitter, 0]
-    tube = raymap.in_tube(start, columns[7] * ~failed, spin, inclination, motion.r, motion.direction, order)
-    shape = (n, count)
+    goal, each = times.ravel() + np.repeat(delay_0, count), _pick(values, path, np.repeat(np.arange(n), count))
+    start_from = (guess.ravel(), begin.reshape(-1, 3))
+    time, columns, start, failed = _converge(path, each, offset, start_from, goal, raymap, order)
+    motion = path.motion(each, time, offset)
+    swept = columns[7] * ~failed
+    tube = raymap.in_tube(start, swept, each["spin"], each["inclination"], motion.r, motion.direction, order)
     return Arrived(
         time.reshape(shape),
         path.motion(values, time.reshape(shape), offset),

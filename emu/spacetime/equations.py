@@ -25,7 +25,7 @@ _FAST = {"contract", "arcp", "reassoc", "nsz"}
 
 @njit(cache=True, fastmath=_FAST)
 def constants(spin, cos_i, sin_i, alpha, beta, par):
-    """Fill the rows of `par` (15, LANES) with the constants of motion and their derivatives by α and β."""
+    """Fill the rows of `par` (16, LANES) with the constants of motion and their derivatives by α and β."""
     for k in range(LANES):
         a, c = spin[k], cos_i[k]
         lam = -alpha[k] * sin_i[k]
@@ -46,6 +46,7 @@ def constants(spin, cos_i, sin_i, alpha, beta, par):
         par[12, k] = 3.0 * eta_b
         par[13, k] = 2.0 * a * a * eta_b
         par[14, k] = eta_b
+        par[15, k] = 0.0  # λ does not depend on β
 
 
 @njit(cache=True, fastmath=_FAST)
@@ -61,50 +62,58 @@ def initial(cos_i, sin_i, alpha, beta, y):
 
 
 @njit(cache=True, fastmath=_FAST)
-def derivative(y, par, sign, out):
-    """Write d`y`/dτ of all lanes to `out` (STATES, LANES); `sign` (LANES,) is the form of T that is followed."""
+def _ray(y, par, sign, out):
+    """Write the derivatives of the ten states of the rays themselves."""
     for k in range(LANES):
-        a, lam, c1, q, c3, k0 = par[0, k], par[1, k], par[2, k], par[3, k], par[4, k], par[5, k]
-        u, v, x, yy, z = y[0, k], y[1, k], y[2, k], y[3, k], y[4, k]
-        aa = a * a
-        c2 = 3.0 * q
-        uu = u * u
-        inverse = 1.0 / (1.0 - 2.0 * u + aa * uu)
-        drag = (2.0 * u - a * lam * uu) * inverse
-        big_k = k0 + 2.0 * aa * z * z
-        slope = c1 + (2.0 * c2 - 3.0 * c3 * u) * u
+        a, lam, q = par[0, k], par[1, k], par[3, k]
+        u, v, z = y[0, k], y[1, k], y[4, k]
+        aa, uu = a * a, u * u
+        big_k = par[5, k] + 2.0 * aa * z * z
         out[0, k] = v
-        out[1, k] = (c1 + (c2 - c3 * u) * u) * u
+        out[1, k] = (par[2, k] + (3.0 * q - par[4, k] * u) * u) * u
         out[2, k] = y[5, k]
         out[3, k] = y[6, k]
         out[4, k] = y[7, k]
-        out[5, k] = -big_k * x
-        out[6, k] = -big_k * yy
+        out[5, k] = -big_k * y[2, k]
+        out[6, k] = -big_k * y[3, k]
         out[7, k] = -(big_k - aa) * z
-        out[8, k] = -a * drag
+        out[8, k] = -a * (2.0 * u - a * lam * uu) / (1.0 - 2.0 * u + aa * uu)
         out[9, k] = (1.0 + aa * uu) * q / (1.0 + (aa - a * lam) * uu + sign[k] * v) + a * (lam - a * (1.0 - z * z))
-        turn = a * inverse * (2.0 * a * lam * u - 2.0 + drag * (2.0 * aa * u - 2.0))
-        # by α
-        du, dx, dy, dz = y[10, k], y[12, k], y[13, k], y[14, k]
-        dk = par[10, k] + 4.0 * aa * z * dz
-        out[10, k] = y[11, k]
-        out[11, k] = slope * du + (par[7, k] + (par[8, k] - par[9, k] * u) * u) * u
-        out[12, k] = y[15, k]
-        out[13, k] = y[16, k]
-        out[14, k] = y[17, k]
-        out[15, k] = -big_k * dx - dk * x
-        out[16, k] = -big_k * dy - dk * yy
-        out[17, k] = -(big_k - aa) * dz - dk * z
-        out[18, k] = turn * du + aa * par[6, k] * uu * inverse
-        # by β (λ does not depend on it)
-        du, dx, dy, dz = y[19, k], y[21, k], y[22, k], y[23, k]
-        dk = par[14, k] + 4.0 * aa * z * dz
-        out[19, k] = y[20, k]
-        out[20, k] = slope * du + (par[11, k] + (par[12, k] - par[13, k] * u) * u) * u
-        out[21, k] = y[24, k]
-        out[22, k] = y[25, k]
-        out[23, k] = y[26, k]
-        out[24, k] = -big_k * dx - dk * x
-        out[25, k] = -big_k * dy - dk * yy
-        out[26, k] = -(big_k - aa) * dz - dk * z
-        out[27, k] = turn * du
+
+
+@njit(cache=True, fastmath=_FAST)
+def _variation(y, par, first, lam_p, constant, out):
+    """Write the derivatives of the nine states from `first` on, which are the ray's differentiated by α or β.
+
+    Args:
+        lam_p: (LANES,) dλ/dα or dλ/dβ.
+        constant: the row of `par` with the derivative of c₁; those of c₂, c₃ and η + λ² follow it.
+    """
+    for k in range(LANES):
+        a, u, z = par[0, k], y[0, k], y[4, k]
+        aa, uu = a * a, u * u
+        du, dz = y[first, k], y[first + 4, k]
+        big_k = par[5, k] + 2.0 * aa * z * z
+        dk = par[constant + 3, k] + 4.0 * aa * z * dz
+        slope = par[2, k] + (6.0 * par[3, k] - 3.0 * par[4, k] * u) * u
+        inverse = 1.0 / (1.0 - 2.0 * u + aa * uu)
+        drag = (2.0 * u - a * par[1, k] * uu) * inverse
+        turn = a * inverse * (2.0 * a * par[1, k] * u - 2.0 + drag * (2.0 * aa * u - 2.0))
+        forced = par[constant, k] + (par[constant + 1, k] - par[constant + 2, k] * u) * u
+        out[first, k] = y[first + 1, k]
+        out[first + 1, k] = slope * du + forced * u
+        out[first + 2, k] = y[first + 5, k]
+        out[first + 3, k] = y[first + 6, k]
+        out[first + 4, k] = y[first + 7, k]
+        out[first + 5, k] = -big_k * y[first + 2, k] - dk * y[2, k]
+        out[first + 6, k] = -big_k * y[first + 3, k] - dk * y[3, k]
+        out[first + 7, k] = -(big_k - aa) * dz - dk * z
+        out[first + 8, k] = turn * du + aa * lam_p[k] * uu * inverse
+
+
+@njit(cache=True, fastmath=_FAST)
+def derivative(y, par, sign, out):
+    """Write d`y`/dτ of all lanes to `out` (STATES, LANES); `sign` (LANES,) is the form of T that is followed."""
+    _ray(y, par, sign, out)
+    _variation(y, par, 10, par[6], 7, out)
+    _variation(y, par, 19, par[15], 11, out)

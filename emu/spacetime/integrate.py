@@ -69,7 +69,7 @@ def integrate_lanes(spin, cos_i, sin_i, alpha, beta, tau, steps, work, sign):
     Returns:
         (STATES, LANES) end state (a view of `work`), in the order that `equations` states.
     """
-    par = np.empty((15, LANES))
+    par = np.empty((16, LANES))
     rows = work.reshape((_STAGES + 3, STATES, LANES))
     y, trial = rows[_STATE], rows[_TRIAL]
     constants(spin, cos_i, sin_i, alpha, beta, par)
