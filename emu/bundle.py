@@ -130,7 +130,7 @@ class Bundle:
             UserError: a flare lies outside the campaign, or there is no such family.
         """
         target = self.campaign.target
-        rows = [flare.rows(target) for flare in flares]
+        rows = [flare.rows(target, self.campaign.flux_unit) for flare in flares]
         for flare, each in zip(flares, rows, strict=True):
             reasons = self.campaign.outside(each)
             if reasons:

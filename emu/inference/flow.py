@@ -6,6 +6,7 @@ al. 2019), which make the rest Gaussian. What depends on the flare alone is comp
 draw.
 """
 
+import math
 from dataclasses import dataclass
 
 import torch
@@ -233,7 +234,7 @@ def draw(flow: Flow, context: Tensor, noise: Tensor) -> tuple[Tensor, Tensor]:
     Returns:
         Draws z (N, B, D), and log q(z) (N, B).
     """
-    log_q = -0.5 * (noise**2 + torch.log(torch.tensor(2 * torch.pi))).sum(-1)
+    log_q = -0.5 * (noise**2 + math.log(2 * math.pi)).sum(-1)
     z = noise
     for lazy in reversed(list(flow.transform.transforms)):
         z, ladj = lazy(context).inverse_and_ladj(z)
