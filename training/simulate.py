@@ -33,7 +33,9 @@ _FINE = 0.1  # a curve is coarse where interpolation may err by more than this, 
 _MOST_REDRAWN = 0.2  # a model that fails more often than this is broken, not unlucky
 
 
-def simulate(family: str, campaign: str, out: Path, flares: int, seed: int, workers: int = 2) -> Path:
+def simulate(
+    family: str, campaign: str, out: Path, flares: int, seed: int, workers: int = 2, show: bool = True
+) -> Path:
     """Make a training set of a family for a campaign, or go on with one that was cut short.
 
     Args:
@@ -43,6 +45,7 @@ def simulate(family: str, campaign: str, out: Path, flares: int, seed: int, work
         flares: number of flares.
         seed: the set is bit-identical for a seed, whatever the number of processes.
         workers: processes.
+        show: whether to show progress.
 
     Returns:
         The folder.
@@ -52,7 +55,7 @@ def simulate(family: str, campaign: str, out: Path, flares: int, seed: int, work
     """
     joined = Problem(model(family), read_campaign(campaign))
     layout = layout_of(joined, flares, seed, family)
-    simulate_problem(joined, layout, out, workers)
+    simulate_problem(joined, layout, out, workers, show)
     return out
 
 
@@ -99,7 +102,7 @@ def model_text(model: Model) -> str:
     return "\n".join([*lines, *map(repr, model.parameters)])
 
 
-def simulate_problem(problem: Problem, layout: Layout, out: Path, workers: int) -> None:
+def simulate_problem(problem: Problem, layout: Layout, out: Path, workers: int, show: bool = False) -> None:
     """Make the chunks of a set that are not there yet.
 
     Args:
@@ -107,6 +110,7 @@ def simulate_problem(problem: Problem, layout: Layout, out: Path, workers: int) 
         layout: from `layout_of`.
         out: folder of the set.
         workers: processes.
+        show: whether to show progress.
     """
     _check_disk(out, layout)
     create(out, layout)
@@ -115,8 +119,8 @@ def simulate_problem(problem: Problem, layout: Layout, out: Path, workers: int) 
     todo = missing_chunks(out, layout)
     work = partial(_make_chunk, problem.model, problem, layout, out)
     done = in_processes(work, todo, workers)
-    failures = sum(_shown(done, layout, todo))
-    if failures:
+    failures = sum(_shown(done, layout, todo) if show else done)
+    if failures and show:
         Console(stderr=True).print(f"{problem.name}: {failures} curves failed and were drawn anew")
 
 
