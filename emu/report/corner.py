@@ -111,7 +111,8 @@ def _marginal(axes: Axes, draws: Array, prior: Array, span: tuple[float, float],
     for end in (interval.low68, interval.high68):
         axes.axvline(end, color="black", linestyle=":", linewidth=0.9)
     if not interval.informed:
-        axes.text(0.5, 0.04, "not informed", transform=axes.transAxes, fontsize=7, ha="center")
+        box = {"facecolor": "white", "alpha": 0.85, "linewidth": 0, "pad": 0.8}
+        axes.text(0.5, 0.04, "not informed", transform=axes.transAxes, fontsize=7, ha="center", bbox=box)
     axes.set_xlim(*span)
     axes.set_ylim(bottom=0.0)
 

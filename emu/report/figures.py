@@ -64,14 +64,12 @@ def data_figure(rows: Rows, prediction: Prediction, scale: Scale, title: str) ->
     figure.align_ylabels(panels)
     panels[-1].set_xlabel("minutes from t_ref")
     handles, labels = panels[0].get_legend_handles_labels()
-    figure.legend(handles, labels, loc="outside lower center", ncols=4, fontsize="small", frameon=False)
+    figure.legend(handles, labels, loc="outside lower center", ncols=5, fontsize="small", frameon=False)
     figure.suptitle(_heading(title, prediction), fontsize="medium")
     return figure
 
 
-def plane_figure(
-    pair: tuple[str, str], rows: Rows, prediction: Prediction, scale: Scale, title: str
-) -> Figure:
+def plane_figure(pair: tuple[str, str], rows: Rows, prediction: Prediction, scale: Scale, title: str) -> Figure:
     """Draw the track of a pair of kinds, coloured by time: the polarisation loop or the path on the sky.
 
     Args:
@@ -82,7 +80,7 @@ def plane_figure(
         title: heading.
 
     Returns:
-        Thin lines for single draws, a line coloured by time for the most central of them, and the data:
+        Thin lines for single draws, a line coloured by time for the likeliest (or most central), and the data:
         circles where both were measured together, squares where one is interpolated to the other's time.
     """
     from matplotlib.figure import Figure
@@ -93,7 +91,7 @@ def plane_figure(
     chosen = np.unique(np.linspace(0, len(x) - 1, _LINES).astype(int))
     axes.plot(x[chosen].T, y[chosen].T, color=COLOURS["narrow"], linewidth=0.6, alpha=0.45, zorder=1)
     axes.plot([], [], color=COLOURS["narrow"], linewidth=0.8, label="single draws")
-    coloured = _coloured_line(axes, x, y, prediction.times * scale.minutes)
+    coloured = _coloured_line(axes, *_track(pair, prediction, scale), prediction.times * scale.minutes)
     _points(axes, _pairs(rows, pair), scale, pair, coloured)
     axes.plot(
         0.0,
@@ -136,28 +134,38 @@ def _bands(panel: Axes, kind: str, prediction: Prediction, scale: Scale) -> None
     levels = spread(curves, _LEVELS)
     new = spread(curves, (_LEVELS[0], _LEVELS[-1]), prediction.deviation[kind] * scale.factor(kind))
     panel.fill_between(minutes, levels[0], levels[4], color=COLOURS["wide"], linewidth=0, label="curve, 95 %")
-    panel.fill_between(
-        minutes, levels[1], levels[3], color=COLOURS["narrow"], linewidth=0, label="curve, 68 %"
-    )
+    panel.fill_between(minutes, levels[1], levels[3], color=COLOURS["narrow"], linewidth=0, label="curve, 68 %")
+    if kind in prediction.likeliest:
+        best = prediction.likeliest[kind] * scale.factor(kind)
+        panel.plot(minutes, best, color="black", linewidth=0.9, linestyle=":", label="likeliest draw")
     panel.plot(minutes, levels[2], color=COLOURS["model"], linewidth=1.2)
     for number, line in enumerate(new):
         label = "new measurement, 95 %" if number == 0 else None
         panel.plot(minutes, line, color=COLOURS["model"], linewidth=0.8, linestyle="--", label=label)
 
 
-def _coloured_line(axes: Axes, x: Array, y: Array, minutes: Array) -> Any:
-    """Draw the draw that is closest to the median track, coloured by time; return it for the colour bar."""
-    from matplotlib.collections import LineCollection
-
+def _track(pair: tuple[str, str], prediction: Prediction, scale: Scale) -> tuple[str, Array, Array]:
+    """Choose the track that stands for all: the likeliest draw, else the one closest to the median track."""
+    if prediction.likeliest:
+        x, y = (prediction.likeliest[kind] * scale.factor(kind) for kind in pair)
+        return "likeliest draw", x, y
+    x, y = (prediction.curves[kind] * scale.factor(kind) for kind in pair)
     distance = (x - np.median(x, axis=0)) ** 2 + (y - np.median(y, axis=0)) ** 2
     central = int(np.argmin(distance.mean(axis=1)))
-    points = np.stack([x[central], y[central]], axis=1)
+    return "most central draw", x[central], y[central]
+
+
+def _coloured_line(axes: Axes, label: str, x: Array, y: Array, minutes: Array) -> Any:
+    """Draw a track coloured by time; return it for the colour bar."""
+    from matplotlib.collections import LineCollection
+
+    points = np.stack([x, y], axis=1)
     segments = np.stack([points[:-1], points[1:]], axis=1)
     axes.add_collection(LineCollection(list(segments), colors="black", linewidths=4.2, zorder=2))
     line = LineCollection(list(segments), cmap=TIMES, linewidths=2.8, zorder=2.1)
     line.set_array(0.5 * (minutes[:-1] + minutes[1:]))
     axes.add_collection(line)
-    axes.plot([], [], color="0.45", linewidth=2.8, label="most central draw")
+    axes.plot([], [], color="0.45", linewidth=2.8, label=label)
     return line
 
 

@@ -21,7 +21,7 @@ from emu.report.toolbox import Recipe
 __all__ = ["Album", "draw_album", "safe_name"]
 
 _SHOWN = 150  # draws whose curves are computed
-_TIMES = 120
+_TIMES = 240
 _PLANE_FILES = {("q", "u"): "loop", ("Q", "U"): "loop-stokes", ("east", "north"): "sky"}
 
 
@@ -64,7 +64,7 @@ def draw_album(album: Album) -> Unanswered | None:
     save(corner, album.folder / "corner.png")
     draws = posterior.flat
     shown = draws[np.unique(np.linspace(0, len(draws) - 1, _SHOWN).astype(int))]
-    prediction = predict(problem, shown, _times(rows), _typical_errors(rows))
+    prediction = predict(problem, shown, _times(rows), _typical_errors(rows), _likeliest(posterior))
     if prediction.dropped == len(shown):
         reason = f"{posterior.family}: none of {len(shown)} draws has curves to draw"
         return Unanswered(posterior.flare, "figures", reason)
@@ -82,6 +82,15 @@ def safe_name(name: str) -> str:
         'night_3_flare_2'
     """
     return re.sub(r"[^A-Za-z0-9.+-]", "_", name).strip(".") or "_"
+
+
+def _likeliest(posterior: Posterior) -> Array | None:
+    """Return the draw (P,) of the highest posterior density; None where no density is known or possible."""
+    if "log_likelihood" not in posterior.stats:
+        return None
+    density = (posterior.stats["log_prior"] + posterior.stats["log_likelihood"]).reshape(-1)
+    best = int(np.argmax(density))
+    return posterior.flat[best] if np.isfinite(density[best]) else None
 
 
 def _times(rows: Rows) -> Array:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from scipy.special import ndtr
@@ -28,15 +28,23 @@ class Prediction:
         deviation: kind -> (N, T) standard deviation of a measurement about the curve: typical error,
             jitter and random wander added in quadrature.
         dropped: draws left out because the prior forbids them or a ray could not be solved.
+        likeliest: kind -> (T,) curve of the draw that fits best; empty where it is not known which.
     """
 
     times: Array
     curves: Mapping[str, Array]
     deviation: Mapping[str, Array]
     dropped: int
+    likeliest: Mapping[str, Array] = field(default_factory=dict)
 
 
-def predict(problem: Problem, theta: Array, times: Array, errors: Mapping[str, float]) -> Prediction:
+def predict(
+    problem: Problem,
+    theta: Array,
+    times: Array,
+    errors: Mapping[str, float],
+    likeliest: Array | None = None,
+) -> Prediction:
     """Compute the curves of draws on a grid of times.
 
     Args:
@@ -44,12 +52,12 @@ def predict(problem: Problem, theta: Array, times: Array, errors: Mapping[str, f
         theta: (N, P) draws, degrees and geometric units.
         times: (T,) GM/c3 from the reference time.
         errors: kind -> typical 1-sigma error, in the kind's inner unit; its keys say which kinds.
+        likeliest: (P,) a valid draw to be shown by itself, or None.
 
     Returns:
         Curves and deviations of the draws that can be computed, with the number of the others.
     """
     good = theta[np.isfinite(problem.prior.log_prob(theta))]
-    kinds = tuple(errors)
     rows = _grid(times, errors)
     expected = problem.expected(good, rows)
     solved = expected.failures == 0
@@ -58,13 +66,13 @@ def predict(problem: Problem, theta: Array, times: Array, errors: Mapping[str, f
     scatter = problem.scatter(good)
     if scatter is not None:
         variance = variance + (lever * scatter[0][:, None]) ** 2
-    shape = (len(good), len(kinds), len(times))
-    mean, deviation = mean.reshape(shape), np.sqrt(variance).reshape(shape)
+    best = {} if likeliest is None else _by_kind(problem.expected(likeliest[None], rows).mean, errors)
     return Prediction(
         np.asarray(times, float),
-        {kind: mean[:, k] for k, kind in enumerate(kinds)},
-        {kind: deviation[:, k] for k, kind in enumerate(kinds)},
+        _by_kind(mean, errors),
+        _by_kind(np.sqrt(variance), errors),
         len(theta) - len(good),
+        {kind: curve[0] for kind, curve in best.items()},
     )
 
 
@@ -82,6 +90,12 @@ def spread(curves: Array, levels: Sequence[float], deviation: Array | None = Non
     if deviation is None:
         return np.asarray(np.quantile(curves, levels, axis=0))
     return np.stack([_mixture_quantile(curves, deviation, level) for level in levels])
+
+
+def _by_kind(values: Array, kinds: Mapping[str, float]) -> dict[str, Array]:
+    """Part values (N, kinds * T) at the rows of `_grid` into one array (N, T) a kind."""
+    parts = values.reshape(len(values), len(kinds), -1)
+    return {kind: parts[:, k] for k, kind in enumerate(kinds)}
 
 
 def _grid(times: Array, errors: Mapping[str, float]) -> Rows:
