@@ -22,6 +22,7 @@ __all__ = ["corner_figure"]
 _BINS = 28
 _SMOOTH = 1.3  # bins
 _EDGE = 0.005  # share of draws beyond each end of an axis
+_LABEL = -0.38  # place of a label beside its panel, in panels
 _HELD = (0.95, 0.68)
 
 
@@ -51,23 +52,22 @@ def corner_figure(
             prior[:, k] = unwrapped(prior[:, k], draws[:, k], start)
             draws[:, k] = unwrapped(draws[:, k], draws[:, k], start)
     spans = [_span(draws[:, k]) for k in range(count)]
-    figure = Figure(figsize=(1.6 + 1.25 * count, 1.6 + 1.25 * count))
-    grid = figure.subplots(count, count, squeeze=False)
+    size = 1.6 + 1.25 * count
+    edge = 0.75 / size
+    figure = Figure(figsize=(size, size))
+    grid = figure.add_gridspec(
+        count, count, left=edge, bottom=edge, right=1 - edge / 2, top=1 - edge, wspace=0.1, hspace=0.22
+    )
     for row in range(count):
-        for column in range(count):
-            axes = grid[row, column]
-            if column > row:
-                axes.set_visible(False)
-            elif column == row:
-                _marginal(axes, draws[:, row], prior[:, row], spans[row], intervals[row])
-                axes.set_title(_numbers(parameters[row], intervals[row]), fontsize=8, loc="left")
-            else:
-                _pair(axes, draws[:, column], draws[:, row], spans[column], spans[row])
-            _ticks(axes, row, column, count, parameters)
-    edge = 0.75 / (1.6 + 1.25 * count)
-    figure.subplots_adjust(left=edge, bottom=edge, right=1 - edge / 2, top=1 - edge, wspace=0.1, hspace=0.22)
-    figure.align_labels()
-    _legend(figure, grid[0, 0], title, 1 - edge / 2)
+        for column in range(row):
+            axes = figure.add_subplot(grid[row, column])
+            _pair(axes, draws[:, column], draws[:, row], spans[column], spans[row])
+            _ticks(axes, row, column, parameters)
+        axes = figure.add_subplot(grid[row, row])
+        _marginal(axes, draws[:, row], prior[:, row], spans[row], intervals[row])
+        axes.set_title(_numbers(parameters[row], intervals[row]), fontsize=8, loc="left")
+        _ticks(axes, row, row, parameters)
+    _legend(figure, figure.axes[0], title, 1 - edge / 2)
     return figure
 
 
@@ -147,23 +147,20 @@ def _numbers(parameter: Parameter, interval: Interval) -> str:
     return f"${parameter.symbol} = {interval.median:.{digits}f}^{{+{up:.{digits}f}}}_{{-{down:.{digits}f}}}$"
 
 
-def _ticks(axes: Axes, row: int, column: int, count: int, parameters: Sequence[Parameter]) -> None:
-    """Label the outer axes only, with few and slanted numbers."""
+def _ticks(axes: Axes, row: int, column: int, parameters: Sequence[Parameter]) -> None:
+    """Give numbers, few and slanted, and labels to the outer axes; ticks on all would double the time."""
     from matplotlib.ticker import MaxNLocator
 
-    axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
-    axes.tick_params(labelsize=7, length=2.5, direction="in")
-    axes.tick_params(axis="x", labelrotation=45)
-    if row == column:
-        axes.set_yticks([])
-    else:
-        axes.yaxis.set_major_locator(MaxNLocator(3, prune="both"))
-        axes.tick_params(axis="y", labelrotation=45)
-    if row == count - 1:
+    axes.tick_params(labelsize=7, length=2.5, direction="in", labelrotation=45)
+    if row == len(parameters) - 1:
+        axes.xaxis.set_major_locator(MaxNLocator(3, prune="both"))
         axes.set_xlabel(axis_label(parameters[column]), fontsize=9)
+        axes.xaxis.set_label_coords(0.5, _LABEL)
     else:
-        axes.tick_params(axis="x", labelbottom=False)
+        axes.set_xticks([])
     if column == 0 and row > 0:
+        axes.yaxis.set_major_locator(MaxNLocator(3, prune="both"))
         axes.set_ylabel(axis_label(parameters[row]), fontsize=9)
+        axes.yaxis.set_label_coords(_LABEL, 0.5)
     else:
-        axes.tick_params(axis="y", labelleft=False)
+        axes.set_yticks([])
