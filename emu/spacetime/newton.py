@@ -16,6 +16,7 @@ __all__ = ["COLUMNS", "solve_newton"]
 # What is known of a solved ray: screen position, Mino time, delay, p_r, p_θ, p_φ/sin θ, magnification with its
 # parity as sign, swept angle.
 COLUMNS = ("alpha", "beta", "tau", "delay", "p_r", "p_theta", "p_phi", "magnification", "swept")
+# Of the last step, and of what it mends at the source; the error left is of second order, of μ of first order.
 _TOLERANCE = 2e-5
 _STEP_ANGLE = 0.55
 
@@ -183,7 +184,8 @@ def _lane(y, a, cos_i, sin_i, sign, r, source, row, memory):
         return 0
     for e in range(3):
         row[e] += change[e]
-    if size > _TOLERANCE * (1.0 + b) or abs(change[2]) > _TOLERANCE * tau or ray[6] < 0.0:
+    missed = max(math.hypot(residual[1], residual[2]), abs(residual[0]) * r)
+    if size > _TOLERANCE * (1.0 + b) or abs(change[2]) > _TOLERANCE * tau or missed > _TOLERANCE or ray[6] < 0.0:
         return 0
     eta = (row[0] ** 2 - a * a) * cos_i**2 + row[1] ** 2
     _momentum(y, a, eta, -row[0] * sin_i, r, basis, change, ray, row)
