@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated
 
 import typer
 
-from emu.console import command_line, finish, run
+from emu.console import command_line, finish, listed, run
 
 if TYPE_CHECKING:
     from training.loop import Outcome
@@ -97,6 +97,28 @@ def publish(
 
 
 @app.command()
+def check(
+    path: Annotated[Path, typer.Argument(metavar="BUNDLE|RUN", help="A bundle, or the folder of a fit.")],
+    out: Annotated[Path, typer.Option(help="Folder for table, JSON and figures.")],
+    families: Annotated[str | None, typer.Option(help="Families, joined by commas, else all.")] = None,
+    cases: Annotated[int, typer.Option(min=20, help="Held-out flares.")] = 500,
+    draws: Annotated[int, typer.Option(min=20, help="Draws of each.")] = 1000,
+    weighed: Annotated[int, typer.Option(min=0, help="Flares weighed by the exact posterior.")] = 20,
+    seed: Annotated[int, typer.Option(help="Another one than the training's.")] = 1,
+    references: Annotated[Path | None, typer.Option(help="Reference draws to compare with.")] = None,
+    across: Annotated[bool, typer.Option("--across", help="Also each family on others' flares.")] = False,
+) -> None:
+    """Check calibration, sharpness and closeness to exact sampling; exit code 0, 1 or 4."""
+    from training.check import check
+
+    code = check(
+        path, out, families=listed(families), cases=cases, draws=draws, weighed=weighed, seed=seed,
+        references=references, across=across,
+    )  # fmt: skip
+    finish(code)
+
+
+@app.command()
 def references(
     family: Family,
     campaign: Campaign,
@@ -112,6 +134,25 @@ def references(
     exact = make(family, campaign, out, want, seed, workers, most=most)
     typer.echo(f"{exact} of {want} flares count as exact", err=True)
     finish(0 if exact >= want else 1)
+
+
+@app.command()
+def table(
+    out: Annotated[Path, typer.Option(help="Folder of all sets, fits and checks, and of the table.")],
+    families: Annotated[str | None, typer.Option(help="Families, joined by commas, else all.")] = None,
+    campaign: Annotated[str, typer.Option(help="Campaign name or TOML.")] = "realistic",
+    flares: Annotated[int, typer.Option(min=1, help="Size of each set.")] = 60_000,
+    minutes: Annotated[float, typer.Option(help="CPU-minutes of each fit.")] = 5.0,
+    config: Config = "default",
+    cases: Annotated[int, typer.Option(min=20, help="Held-out flares of the checks.")] = 500,
+    seed: Seed = 0,
+    workers: Workers = 2,
+) -> None:
+    """Simulate, fit and check every family, or go on with that."""
+    from training.table import Plan, table
+
+    plan = Plan(campaign, flares, minutes, config, cases, seed=seed)
+    table(out, plan, listed(families), workers, report=lambda line: typer.echo(line.family, err=True))
 
 
 def _tell(outcome: "Outcome") -> None:
