@@ -54,12 +54,10 @@ def answer(
     Raises:
         UserError: options do not fit together, or a config or the bundle cannot be used.
     """
-    for option, value, allowed in (("finish", finish, ("none", "exact")), ("raymap", raymap, ("exact",))):
-        if value not in allowed:
-            raise UserError(f"--{option} is {value!r}; one of {', '.join(allowed)}")
-    for option, number in (("draws", draws), ("workers", workers)):
-        if number < 1:
-            raise UserError(f"--{option} is {number}; give 1 or more")
+    _check_choice("finish", finish, ("none", "exact"))
+    _check_choice("raymap", raymap, ("exact",))
+    _check_count("draws", draws)
+    _check_count("workers", workers)
     asked = None if families is None else tuple(families)
     recipe = _recipe(bundle, campaign, asked, finish == "exact")
     wish = Wish(
@@ -76,6 +74,18 @@ def answer(
         target=None if target is None else Target.from_table(read_toml("targets", target), target),
     )
     return run(recipe, paths, out, wish)
+
+
+def _check_choice(option: str, value: str, allowed: tuple[str, ...]) -> None:
+    """Refuse what is not one of a few words."""
+    if value not in allowed:
+        raise UserError(f"--{option} is {value!r}; one of {', '.join(allowed)}")
+
+
+def _check_count(option: str, value: int) -> None:
+    """Refuse a number below one."""
+    if value < 1:
+        raise UserError(f"--{option} is {value}; give 1 or more")
 
 
 def _recipe(
