@@ -10,16 +10,19 @@ from __future__ import annotations
 import math
 
 import numpy as np
+from numba import njit
 
 from emu.spacetime.newton import solve_newton
 from emu.spacetime.rays import Array, Flags
+from emu.spacetime.start import critical_impact
 
 __all__ = ["in_tube"]
 
-_LOOKS = 12
+_LOOKS = 24
 _WIDTHS = (0.3, 0.9)  # generous bounds of a tube's half width over a² sin² i, rad of swept angle, orders 0 and 1
 _SAME = 1e-2  # GM/c²
 _NEWTON_STEPS = 20
+_LEAST_BEYOND = 0.01  # GM/c², of a start beyond the critical curve
 
 
 def _distinct(images: list[Array]) -> Array:
@@ -33,12 +36,24 @@ def _distinct(images: list[Array]) -> Array:
     return count
 
 
+@njit(cache=True)
+def _look_starts(spin, cos_i, sin_i, known, turned, out):
+    """Write starts to `out` (N, ≥ 3): the known image's distance beyond the critical curve, in a turned direction."""
+    for k in range(len(spin)):
+        b = math.hypot(known[k, 0], known[k, 1])
+        angle = math.atan2(known[k, 1], known[k, 0])
+        beyond = b - critical_impact(spin[k], cos_i[k], sin_i[k], math.cos(angle), math.sin(angle))
+        right, up = math.cos(angle + turned), math.sin(angle + turned)
+        there = critical_impact(spin[k], cos_i[k], sin_i[k], right, up) + max(beyond, _LEAST_BEYOND)
+        out[k, 0], out[k, 1], out[k, 2] = there * right, there * up, known[k, 2] * b / there
+
+
 def in_tube(
     start: Array, swept: Array, spin: Array, inclination: Array, r: Array, n: Array, order: int
 ) -> Flags:
     """Tell which of the solved rays come from sources within the tube that ends their image order.
 
-    Only rays whose swept angle is close to the caustic are looked at: from twelve starts around the critical curve
+    Only rays whose swept angle is close to the caustic are looked at: from 24 starts around the critical curve
     all images are sought that sweep about the same angle; more than two mean a tube.
 
     Args:
@@ -55,14 +70,12 @@ def in_tube(
     if len(near) == 0:
         return inside
     a, cos_i, sin_i = spin[near], np.cos(inclination[near]), np.sin(inclination[near])
-    centre = a * sin_i
-    across, up, tau = start[near, 0] - centre, start[near, 1], start[near, 2]
-    images = []
+    sources = np.ascontiguousarray(n[near])
+    images = [start[near, :2]]
     for look in range(_LOOKS):
-        c, s = math.cos(2.0 * math.pi * look / _LOOKS), math.sin(2.0 * math.pi * look / _LOOKS)
         found = np.zeros((len(near), 9))
-        found[:, :3] = np.stack((centre + c * across - s * up, s * across + c * up, tau), axis=-1)
-        good = solve_newton(a, cos_i, sin_i, r[near], np.ascontiguousarray(n[near]), found, _NEWTON_STEPS)
+        _look_starts(a, cos_i, sin_i, np.ascontiguousarray(start[near]), 2.0 * math.pi * look / _LOOKS, found)
+        good = solve_newton(a, cos_i, sin_i, r[near], sources, found, _NEWTON_STEPS)
         good &= np.abs(found[:, 8] - end) < 1.0
         images.append(np.where(good[:, None], found[:, :2], np.nan))
     inside[near] = _distinct(images) > 2
