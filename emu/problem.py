@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 
 from emu.errors import UserError
 from emu.families.density import Array
+from emu.families.installed import model
 from emu.families.model import Model
 from emu.families.parameters import Parameter
 from emu.families.prior import Prior
@@ -129,9 +130,7 @@ class Problem:
         """Return the deviation (N,) and lifetime (N,) of the wander of q and u, or None."""
         return self.model.scatter(self._of_model(theta))
 
-    def simulate(
-        self, theta: Array, batch: RowBatch, rng: np.random.Generator
-    ) -> tuple[RowBatch, NDArray[np.int64]]:
+    def simulate(self, theta: Array, batch: RowBatch, rng: np.random.Generator) -> tuple[RowBatch, NDArray[np.int64]]:
         """Invent measurements on a given schedule.
 
         Args:
@@ -188,9 +187,7 @@ class Problem:
     def _curve(self, curves: dict[str, Array], need: str, row: str) -> Array:
         """Return a curve, or say which rows cannot be predicted without it."""
         if need not in curves:
-            raise UserError(
-                f"model {self.name} gives no {need!r}, which rows of {row!r} need: leave them out"
-            )
+            raise UserError(f"model {self.name} gives no {need!r}, which rows of {row!r} need: leave them out")
         return curves[need]
 
 
@@ -204,6 +201,4 @@ def problem(model_name: str, campaign_name: str) -> Problem:
     Raises:
         UserError: one of them cannot be found or makes no sense.
     """
-    from emu.families.installed import model
-
     return Problem(model(model_name), campaign(campaign_name))

@@ -14,11 +14,14 @@ from emu.families.family import Family
 from emu.families.normal import Normal
 from emu.families.parameters import Parameter
 from emu.families.priors import CosUniform, LogUniform, SinUniform, TwoSided, Uniform
-from emu.families.vocabulary import COMMON, SECOND_BUMP, WORDS, named
+from emu.families.vocabulary import WORDS, named
+from emu.source.change import FieldChange
 from emu.source.drift import Drift
 from emu.source.frozen import Frozen
 from emu.source.helix import Helix
 from emu.source.midplane import Midplane
+from emu.source.motion import Path
+from emu.source.scatter import Scatter
 from emu.source.source import Source
 from emu.source.turbulent import Turbulent
 from emu.source.turning import Turning
@@ -26,8 +29,8 @@ from emu.source.turning import Turning
 __all__ = ["family", "family_names", "family_text", "parse_family"]
 
 # The only place where the words of a TOML become parts.
-_PATHS = {"midplane": Midplane(), "helix": Helix(), "drift": Drift()}
-_INNER = {
+_PATHS: dict[str, Path] = {"midplane": Midplane(), "helix": Helix(), "drift": Drift()}
+_INNER: dict[str, tuple[FieldChange, Scatter | None]] = {
     "frozen": (Frozen(), None),
     "turning": (Turning(), None),
     "turbulent": (Frozen(), Turbulent()),
@@ -133,12 +136,9 @@ def _validity(table: Mapping[str, Any], where: str) -> tuple[tuple[float, float]
 
 
 def _names(source: Source, spot: bool) -> tuple[str, ...]:
-    """List the parameters that the parts of a source take, in the order of the vocabulary."""
-    parts = (source.path, source.change, source.scatter)
-    taken = {*COMMON, *(name for part in parts if part is not None for name in part.parameter_names)}
-    taken |= set(SECOND_BUMP) if source.bumps == 2 else set()
-    taken |= {"spot_size"} if spot else set()
-    return tuple(name for name in WORDS if name in taken)
+    """List the parameters that a source and its size take, in the order of the vocabulary."""
+    taken = {*source.parameter_names, *(("spot_size",) if spot else ())}
+    return tuple(sorted(taken, key=list(WORDS).index))
 
 
 def _parameters(table: Any, names: tuple[str, ...], where: str) -> tuple[Parameter, ...]:

@@ -71,6 +71,8 @@ class Family:
             kind -> (N, T) and "failures" -> (N,). With turbulence, q and u are those of the ordered part.
         """
         count = np.shape(times)[-1]
+        if len(theta) == 0:
+            return {**dict.fromkeys(self.kinds, np.empty((0, count))), "failures": np.empty(0)}
         per_flare = np.ascontiguousarray(np.broadcast_to(times, (len(theta), count)), float)
         curves = assemble(
             self.source, self._values(theta), per_flare, ExactRays(), orders=self.orders, spot_points=None

@@ -23,8 +23,7 @@ class Normal:
     def __post_init__(self) -> None:
         if not (np.isfinite(self.mean) and np.isfinite(self.deviation) and self.deviation > 0.0):
             raise UserError(
-                f"prior normal = [{self.mean}, {self.deviation}]: give a finite mean and a "
-                "positive standard deviation"
+                f"prior normal = [{self.mean}, {self.deviation}]: give a finite mean and a positive standard deviation"
             )
 
     @property

@@ -24,8 +24,7 @@ def _check(name: str, low: float, high: float, least: float, most: float) -> Non
     """Refuse bounds that are not ordered and within least..most."""
     if not (np.isfinite(low) and np.isfinite(high) and least <= low < high <= most):
         raise UserError(
-            f"prior {name} = [{low}, {high}]: give two finite numbers, the lower first, "
-            f"between {least:g} and {most:g}"
+            f"prior {name} = [{low}, {high}]: give two finite numbers, the lower first, between {least:g} and {most:g}"
         )
 
 
@@ -125,9 +124,7 @@ class CosUniform:
         """Return the log density per degree."""
         width = np.cos(np.radians(self.low)) - np.cos(np.radians(self.high))
         with np.errstate(divide="ignore"):  # the density is zero at a pole
-            return _between(
-                x, self.low, self.high, lambda v: np.log(np.sin(np.radians(v)) * np.pi / 180.0 / width)
-            )
+            return _between(x, self.low, self.high, lambda v: np.log(np.sin(np.radians(v)) * np.pi / 180.0 / width))
 
 
 @dataclass(frozen=True)

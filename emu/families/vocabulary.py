@@ -8,7 +8,7 @@ from emu.errors import UserError
 from emu.families.density import Density
 from emu.families.parameters import Parameter
 
-__all__ = ["COMMON", "SECOND_BUMP", "WORDS", "named"]
+__all__ = ["WORDS", "named"]
 
 
 @dataclass(frozen=True)
@@ -64,10 +64,6 @@ WORDS: dict[str, Word] = {
     "cell_lifetime": Word(r"\tau_\mathrm{c}", "GM/c3", 0.0, _ANY),
 }
 
-COMMON = ("spin", "inclination", "axis_angle", "radius", "phase", "tilt", "pitch", "index",
-          "polarised_share", "brightness", "peak_time", "rise_time", "decay_time")  # fmt: skip
-SECOND_BUMP = ("peak_time_2", "rise_time_2", "decay_time_2", "weight_2")
-
 
 def named(name: str, prior: Density, where: str) -> Parameter:
     """Give a known parameter its prior.
@@ -84,8 +80,7 @@ def named(name: str, prior: Density, where: str) -> Parameter:
     low, high = prior.bounds
     if low < word.low or high > word.high:
         raise UserError(
-            f"{where}: the prior of {name} reaches from {low:g} to {high:g}; "
-            f"stay within {word.low:g} to {word.high:g}"
+            f"{where}: the prior of {name} reaches from {low:g} to {high:g}; stay within {word.low:g} to {word.high:g}"
         )
     # An arc is an ordinary interval; only a prior over the whole circle has no ends.
     circular = word.circle and (low, high) == (0.0, 360.0)

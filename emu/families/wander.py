@@ -10,9 +10,7 @@ from emu.families.density import Array
 __all__ = ["draw_wander"]
 
 
-def draw_wander(
-    sigma: Array, lifetime: Array, time: Array, mask: NDArray[np.bool_], rng: np.random.Generator
-) -> Array:
+def draw_wander(sigma: Array, lifetime: Array, time: Array, mask: NDArray[np.bool_], rng: np.random.Generator) -> Array:
     """Draw one path of the process per flare, exactly, at given times.
 
     Covariance sigma^2 exp(-|t_i - t_j| / lifetime) (Uhlenbeck & Ornstein 1930): from one time to the next

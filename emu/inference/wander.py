@@ -32,15 +32,18 @@ def wander_log_density(
     """
     order = np.argsort(time, kind="stable")
     steps = np.diff(time[order], prepend=time[order[:1]])
-    columns = (np.ascontiguousarray(table[:, order], float) for table in (residual, variance, lever))
-    result: Array = _filter(*columns, steps, np.asarray(sigma, float), np.asarray(lifetime, float))
-    return result
+    return _filter(
+        np.ascontiguousarray(residual[:, order]),
+        np.ascontiguousarray(variance[:, order]),
+        np.ascontiguousarray(lever[:, order]),
+        steps,
+        np.ascontiguousarray(sigma),
+        np.ascontiguousarray(lifetime),
+    )
 
 
-@numba.njit(cache=True)  # type: ignore[untyped-decorator]
-def _filter(
-    residual: Array, variance: Array, lever: Array, steps: Array, sigma: Array, lifetime: Array
-) -> Array:
+@numba.njit(cache=True)
+def _filter(residual: Array, variance: Array, lever: Array, steps: Array, sigma: Array, lifetime: Array) -> Array:
     """Run the filter over rows in order of time, for each parameter vector."""
     total = np.empty(residual.shape[0])
     for n in range(residual.shape[0]):

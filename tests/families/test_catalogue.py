@@ -38,9 +38,7 @@ def test_a_path_to_a_file_works_and_a_name_may_differ(tmp_path):
 def test_part_of_a_circle_is_no_circle():
     whole = {p.name: p.circular for p in family("midplane-turning").parameters}
     assert [name for name, circular in whole.items() if circular] == ["axis_angle", "phase", "roll"]
-    half = parse_family(
-        TEXT.replace("phase = { uniform = [0.0, 360.0]", "phase = { uniform = [0.0, 180.0]"), "x"
-    )
+    half = parse_family(TEXT.replace("phase = { uniform = [0.0, 360.0]", "phase = { uniform = [0.0, 180.0]"), "x")
     assert not {p.name: p.circular for p in half.parameters}["phase"]
 
 

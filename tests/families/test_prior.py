@@ -143,9 +143,7 @@ SQUARE = (Parameter("x", "x", "", Uniform(-1.0, 1.0)), Parameter("y", "y", "", U
 
 def test_accepted_fraction_of_a_disc_in_a_square_is_pi_over_four():
     prior = Prior(SQUARE, disc)
-    assert prior.accepted_fraction_error == pytest.approx(
-        np.sqrt(np.pi / 4 * (1 - np.pi / 4) / 200_000), rel=0.01
-    )
+    assert prior.accepted_fraction_error == pytest.approx(np.sqrt(np.pi / 4 * (1 - np.pi / 4) / 200_000), rel=0.01)
     assert abs(prior.accepted_fraction - np.pi / 4) < 4 * prior.accepted_fraction_error
     inside = prior.log_prob(np.array([[0.1, 0.2]]))[0]
     assert inside == pytest.approx(-np.log(np.pi), abs=4 * prior.accepted_fraction_error)
