@@ -5,7 +5,7 @@ from typing import TYPE_CHECKING, Any
 
 if TYPE_CHECKING:
     from emu.bundle import open_bundle
-    from emu.curves import curves
+    from emu.evaluate import curves
     from emu.families.catalogue import family, family_names
     from emu.observe.flare import read_flare
 
@@ -16,7 +16,7 @@ __version__ = "0.1.0"
 # Where each public name lives. They are imported when first used, so that `import emu` and
 # `emu --help` stay quick.
 _HOMES = {
-    "curves": "emu.curves",
+    "curves": "emu.evaluate",
     "family": "emu.families.catalogue",
     "family_names": "emu.families.catalogue",
     "read_flare": "emu.observe.flare",

@@ -105,7 +105,7 @@ def _rough_times(path: Path, values: Values, offset: Offset, times: Array) -> Ar
     return time
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _between(node_times, arrivals, slopes, starts, times, guess, start):
     """Invert arrival times by cubic Hermite pieces, and interpolate the rays' starts with four nodes.
 

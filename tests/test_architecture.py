@@ -23,7 +23,7 @@ LAYERS = {
     "assemble": 6,
     "families": 7,
     "observe": 8,
-    "curves": 9,
+    "evaluate": 9,
     "problem": 9,
     "inference": 10,
     "bundle": 11,
@@ -135,14 +135,6 @@ def test_no_module_of_emu_imports_its_public_face(path: Path) -> None:
     # `import emu` inside emu would be a circle; the names behind it live in the modules themselves.
     if dotted(path).startswith("emu."):
         assert "emu" not in imported(path), dotted(path)
-
-
-def test_the_function_curves_is_taken_from_emu_only() -> None:
-    # `emu.curves` is a function that lives in a module of the same name: whoever imports the module
-    # first would put it where the function belongs.
-    files = [path for top in ("emu", "training", "tests") for path in (ROOT / top).rglob("*.py")]
-    wrong = [path for path in files if "emu.curves" in imported(path)]
-    assert wrong == [ROOT / "emu" / "__init__.py"], f"use `from emu import curves` in {wrong}"
 
 
 def test_layers_are_noticed_when_broken(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:

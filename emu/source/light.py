@@ -30,7 +30,7 @@ def brightness_profile(time: Array, peak: Array, rise: Array, decay: Array) -> A
     return np.exp(-0.5 * ((time - peak) / width) ** 2)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _transported(a, r, cos_t, sin_t, f_t, f1, f2, f3, k_t, k1, k2, k3, frame, screen):
     """Return cos 2chi and sin 2chi on the screen of a vector (f) carried along the photon (k), both given to the
     zero-angular-momentum observer; chi runs from +beta towards -alpha."""
@@ -52,7 +52,7 @@ def _transported(a, r, cos_t, sin_t, f_t, f1, f2, f3, k_t, k1, k2, k3, frame, sc
     return (up * up - right * right) / norm, -2.0 * right * up / norm
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _one(a, sin_i, r, n, rates, ray, b, strength, index, out):
     """Fill `out` (5,) for one ray: flux, cos 2chi, sin 2chi, redshift g, sin zeta."""
     cos_t, sin_t = n[2], math.hypot(n[0], n[1])
@@ -65,6 +65,8 @@ def _one(a, sin_i, r, n, rates, ray, b, strength, index, out):
     gamma = 1.0 / math.sqrt(1.0 - v_v)
     k1, k2, k3 = ray[2] / root_rr, ray[3] / root_tt, ray[4] / varpi
     energy = math.sqrt(k1 * k1 + k2 * k2 + k3 * k3)  # the null condition
+    if energy == 0.0:  # no ray was found
+        return False
     v_k = v1 * k1 + v2 * k2 + v3 * k3
     comoving = gamma * (energy - v_k)
     boost = gamma * gamma / (gamma + 1.0)  # (gamma - 1)/v^2
@@ -87,7 +89,7 @@ def _one(a, sin_i, r, n, rates, ray, b, strength, index, out):
     return True
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def shine(spin, inclination, r, n, rates, rays, b, strength, index):
     """Compute what point emitters of unit brightness send along their rays.
 
@@ -98,7 +100,7 @@ def shine(spin, inclination, r, n, rates, rays, b, strength, index):
 
     Returns:
         (N, 5) float64: flux g^(3+s) mu (|B| sin zeta)^(1+s), cos 2chi, sin 2chi on the screen, g, sin zeta;
-        (N,) bool, False where the emitter is not slower than light and the row is zero.
+        (N,) bool, False where there is no ray or the emitter is not slower than light: the row is then zero.
     """
     out = np.zeros((len(r), 5))
     timelike = np.zeros(len(r), dtype=np.bool_)

@@ -23,7 +23,7 @@ STATES = 28  # u u' x y z x' y' z' δ T, then the first nine differentiated by �
 _FAST = {"contract", "arcp", "reassoc", "nsz"}
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def constants(spin, cos_i, sin_i, alpha, beta, par):
     """Fill the rows of `par` (16, LANES) with the constants of motion and their derivatives by α and β."""
     for k in range(LANES):
@@ -49,7 +49,7 @@ def constants(spin, cos_i, sin_i, alpha, beta, par):
         par[15, k] = 0.0  # λ does not depend on β
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def initial(cos_i, sin_i, alpha, beta, y):
     """Fill `y` (STATES, LANES) with the start at the observer: n along the line of sight, n' on the screen."""
     y[:, :] = 0.0
@@ -61,7 +61,7 @@ def initial(cos_i, sin_i, alpha, beta, y):
         y[24, k], y[26, k] = -cos_i[k], sin_i[k]  # ∂x'/∂β, ∂z'/∂β
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def _ray(y, par, sign, out):
     """Write the derivatives of the ten states of the rays themselves."""
     for k in range(LANES):
@@ -81,7 +81,7 @@ def _ray(y, par, sign, out):
         out[9, k] = (1.0 + aa * uu) * q / (1.0 + (aa - a * lam) * uu + sign[k] * v) + a * (lam - a * (1.0 - z * z))
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def _variation(y, par, first, lam_p, constant, out):
     """Write the derivatives of the nine states from `first` on, which are the ray's differentiated by α or β.
 
@@ -111,7 +111,7 @@ def _variation(y, par, first, lam_p, constant, out):
         out[first + 8, k] = turn * du + aa * lam_p[k] * uu * inverse
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def derivative(y, par, sign, out):
     """Write d`y`/dτ of all lanes to `out` (STATES, LANES); `sign` (LANES,) is the form of T that is followed."""
     _ray(y, par, sign, out)

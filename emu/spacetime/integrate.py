@@ -36,13 +36,13 @@ def _sparse_tableau() -> tuple[np.ndarray, np.ndarray, np.ndarray]:
 _COLUMNS, _WEIGHTS, _GROUPS = _sparse_tableau()
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def scratch():
     """Return the working memory of one call of `integrate_lanes`; its last state row is read by the caller."""
     return np.zeros((_STAGES + 3, STATES * LANES))
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def _combine(work, stage, goal):
     """Write state + step Σ weight · stage to the row `goal`: four stages a pass, so that registers are filled."""
     for m in range(STATES * LANES):
@@ -56,7 +56,7 @@ def _combine(work, stage, goal):
             work[goal, m] += work[_STEP, m] * change
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def integrate_lanes(spin, cos_i, sin_i, alpha, beta, tau, steps, work, sign):
     """Follow LANES rays from the observer over the Mino times `tau`.
 

@@ -34,7 +34,7 @@ def circular_frequency(spin: Array | float, radius: Array | float) -> Array:
     return np.asarray(1.0 / (np.power(radius, 1.5) + spin))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def tortoise(spin: float, radius: float) -> float:
     """Return r* = ∫ (r² + a²)/Δ dr with the constant chosen so that r* − r = 2 ln(r/2 − 1) at a = 0."""
     root = math.sqrt(1.0 - spin * spin)
@@ -42,7 +42,7 @@ def tortoise(spin: float, radius: float) -> float:
     return radius + (outer * math.log(0.5 * (radius - outer)) - inner * math.log(0.5 * (radius - inner))) / root
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def frame_at(spin: float, radius: float, cos_theta: float) -> tuple[float, float, float, float, float, float]:
     """Describe the zero-angular-momentum observer: metric factors of its orthonormal tetrad.
 

@@ -21,7 +21,7 @@ _TOLERANCE = 2e-5
 _STEP_ANGLE = 0.55
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _solve_three(m, v, out):
     """Solve the 3 × 3 system m x = v by Cramer's rule and return the determinant."""
     c0 = m[1, 1] * m[2, 2] - m[1, 2] * m[2, 1]
@@ -41,7 +41,7 @@ def _solve_three(m, v, out):
     return det
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _basis(n, basis):
     """Write the unit vectors of θ and φ at the direction n; on the axis φ = 0 is taken."""
     rho = math.hypot(n[0], n[1])
@@ -50,7 +50,7 @@ def _basis(n, basis):
     basis[1, 0], basis[1, 1], basis[1, 2] = -s, c, 0.0
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _turned(y, row, lift, n, cd, sd, basis, out, column):
     """Project a change of the undragged direction, plus a drag `lift`, on the basis at the source."""
     x = y[row, 0] - lift * n[1]
@@ -60,7 +60,7 @@ def _turned(y, row, lift, n, cd, sd, basis, out, column):
         out[1 + e, column] = basis[e, 0] * (cd * x - sd * w) + basis[e, 1] * (sd * x + cd * w) + basis[e, 2] * z
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _linearise(y, a, lam, basis, source, u_source, matrix, residual, ray):
     """Fill the matrix ∂(u, direction)/∂(α, β, τ) and the residual of one lane; `ray` receives what else is needed.
 
@@ -88,7 +88,7 @@ def _linearise(y, a, lam, basis, source, u_source, matrix, residual, ray):
     residual[0], residual[1], residual[2] = u_source - u, chord_1 * scale, chord_2 * scale
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _magnification(a, cos_theta, r, out, matrix, move, one, two):
     """Return ±|d(α, β)/dA⊥|: two displacements orthogonal to the photon for the zero-angular-momentum observer."""
     _lapse, _omega, root_rr, root_tt, varpi, _delta = frame_at(a, r, cos_theta)
@@ -112,7 +112,7 @@ def _magnification(a, cos_theta, r, out, matrix, move, one, two):
     return one[0] * two[1] - one[1] * two[0]
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _swept(y, cos_i, sin_i, alpha, beta, tau):
     """Return the angle swept about the hole, the drag apart, in the plane of the line of sight and the start."""
     b = math.hypot(alpha, beta)
@@ -124,7 +124,7 @@ def _swept(y, cos_i, sin_i, alpha, beta, tau):
     return angle + 2.0 * math.pi * round((b * tau - angle) / (2.0 * math.pi))
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _momentum(y, a, eta, lam, r, basis, change, ray, out):
     """Write p_r, p_θ, p_φ/sin θ of the photon at the source: the ray's end, moved by the last change of (α, β, τ)."""
     da, db, dt = change[0], change[1], change[2]
@@ -142,7 +142,7 @@ def _momentum(y, a, eta, lam, r, basis, change, ray, out):
     out[6] = -(basis[1, 0] * tx + basis[1, 1] * ty)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _delay(y, a, sign, r, residual, ray, out):
     """Return the delay at the source: that at the ray's end less p·dx, with the mean of the two momenta."""
     end = 1.0 / y[0, 0]
@@ -152,7 +152,7 @@ def _delay(y, a, sign, r, residual, ray, out):
     return elapsed - radial - across
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _lane(y, a, cos_i, sin_i, sign, r, source, row, memory):
     """Make one Newton step for one ray and, where it was the last, finish the ray.
 
@@ -195,7 +195,7 @@ def _lane(y, a, cos_i, sin_i, sign, r, source, row, memory):
     return 1
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _back_off(row, good, tried):
     """Move a ray that fell in towards its last good place, or outwards where it had none."""
     for e in range(3):
@@ -205,7 +205,7 @@ def _back_off(row, good, tried):
             row[e] *= 1.15 if e < 2 else 1.0 / 1.15
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def solve_newton(spin, cos_i, sin_i, r, n, rays, most):
     """Solve for the rays from the starts in the first three columns of `rays`, LANES at a time.
 

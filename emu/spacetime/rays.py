@@ -62,7 +62,7 @@ def _table() -> Array:
     return np.asarray(zero_spin_table())
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _is_image(rays, order, slack):
     parity = 1.0 if order == 0 else -1.0
     low, high = order * math.pi - slack, (order + 1) * math.pi + slack

@@ -21,7 +21,7 @@ _MARGIN = 0.02  # of Ψ at both ends: at 0 and 2π the ray is radial
 _CRITICAL = math.sqrt(27.0)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _rough_impact(u: float, psi: float, order: int) -> float:
     """Return a rough impact parameter that carries the steep dependence on distance and angle.
 
@@ -36,7 +36,7 @@ def _rough_impact(u: float, psi: float, order: int) -> float:
     return math.sqrt(weak * weak + 27.0)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _shoot(b: float, psi: float) -> tuple[float, float]:
     """Return u after the swept angle Ψ (2 where the ray has fallen in) and the drag ∫2u/(1 − 2u) dτ."""
     u, v, drag = 0.0, 1.0 / b, 0.0
@@ -59,12 +59,12 @@ def _shoot(b: float, psi: float) -> tuple[float, float]:
     return u, drag
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _grid_angle(order: int, j: float) -> float:
     return math.pi * order + _MARGIN + (math.pi - 2.0 * _MARGIN) * j / (_N_PSI - 1)
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def zero_spin_table():
     """Tabulate b over its rough value, and the drag, on a grid of (√u, Ψ) for both orders.
 
@@ -90,7 +90,7 @@ def zero_spin_table():
     return table
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _look_up(table, u, psi, order):
     """Interpolate b and the drag linearly; beyond the edges the nearest cell is continued flat."""
     s = (math.sqrt(u) - _S_LOW) / (_S_HIGH - _S_LOW) * (_N_U - 1)
@@ -108,7 +108,7 @@ def _look_up(table, u, psi, order):
     return ratio * _rough_impact(u, psi, order), drag
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def critical_impact(a, cos_i, sin_i, right, up):
     """Return the distance of the critical curve from the screen's origin in the direction (right, up).
 
@@ -134,7 +134,7 @@ def critical_impact(a, cos_i, sin_i, right, up):
     return b if 1.0 < b < 9.0 else _CRITICAL + 2.0 * a * sin_i * right
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def start_rays(table, spin, cos_i, sin_i, u, n, order, given, out):
     """Write (α, β, τ) for rays of the given image order to `out` (N, 3).
 
@@ -170,7 +170,7 @@ def start_rays(table, spin, cos_i, sin_i, u, n, order, given, out):
         out[k, 0], out[k, 1], out[k, 2] = b * right, b * up, psi / b
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def caustic_centres(table, spin, cos_i, sin_i, u, order):
     """Return the directions (N, 3) about which the caustic that ends the given order lies: behind the hole for order
     0, before it for order 1, turned by the drag of first order in spin."""

@@ -36,7 +36,7 @@ def _distinct(images: list[Array]) -> Array:
     return count
 
 
-@njit(cache=True)
+@njit(cache=True, error_model="numpy")
 def _look_starts(spin, cos_i, sin_i, known, turned, out):
     """Write starts to `out` (N, ≥ 3): the known image's distance beyond the critical curve, in a turned direction."""
     for k in range(len(spin)):
