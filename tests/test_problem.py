@@ -125,9 +125,7 @@ def test_longer_padding_changes_no_wander_statistics():
     schedule = rows(("q", "q"), (0, 6))
     batch = repeated(schedule, 20_000)
     wide = RowBatch(
-        **{
-            name: np.pad(getattr(batch, name), ((0, 0), (3, 2))) for name in ("time", "kind", "value", "mask")
-        },
+        **{name: np.pad(getattr(batch, name), ((0, 0), (3, 2))) for name in ("time", "kind", "value", "mask")},
         error=np.pad(batch.error, ((0, 0), (3, 2)), constant_values=1.0),
     )
     theta = np.tile([1.0, 0.0, 0.0, 0.0], (20_000, 1))
@@ -140,6 +138,4 @@ def test_longer_padding_changes_no_wander_statistics():
 
 def test_problems_are_values():
     assert Problem(ToyModel(), ToyCampaign()) == Problem(ToyModel(), ToyCampaign())
-    assert Problem(ToyModel(), ToyCampaign()) != replace(
-        Problem(ToyModel(), ToyCampaign()), model=ToyModel("other")
-    )
+    assert Problem(ToyModel(), ToyCampaign()) != replace(Problem(ToyModel(), ToyCampaign()), model=ToyModel("other"))

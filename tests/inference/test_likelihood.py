@@ -50,9 +50,7 @@ class Wandering:
 def rows_of(kinds, rng, span=60.0):
     kind = np.array([KINDS.index(k) for k in kinds], np.int8)
     shape = kind.shape
-    return Rows(
-        rng.uniform(-span, span, shape), kind, rng.normal(0, 0.3, shape), rng.uniform(0.01, 0.1, shape)
-    )
+    return Rows(rng.uniform(-span, span, shape), kind, rng.normal(0, 0.3, shape), rng.uniform(0.01, 0.1, shape))
 
 
 def dense(problem, theta, rows):
@@ -117,9 +115,7 @@ def test_order_of_rows_does_not_matter():
     mixed = rng.permutation(len(rows))
     other = Rows(rows.time[mixed], rows.kind[mixed], rows.value[mixed], rows.error[mixed])
     theta = problem.prior.sample(20, rng)
-    np.testing.assert_allclose(
-        log_likelihood(problem, theta, rows), log_likelihood(problem, theta, other), atol=1e-9
-    )
+    np.testing.assert_allclose(log_likelihood(problem, theta, rows), log_likelihood(problem, theta, other), atol=1e-9)
 
 
 @pytest.mark.parametrize("wander", [None, (0.1, 15.0)])
@@ -139,9 +135,7 @@ def test_posterior_density_closes_with_the_closed_form_evidence(wander):
 def test_failures_and_invalid_parameters_have_no_density():
     problem = Problem(Wandering(), ToyCampaign())
     rows = rows_of(("q", "u", "flux") * 4, np.random.default_rng(5))
-    theta = np.array(
-        [[1.0, 0.1, 0.1, 10.0], [1.95, 0.1, 0.1, 10.0], [1.0, -0.28, 0.1, 10.0], [9.0, 0.1, 0.1, 10.0]]
-    )
+    theta = np.array([[1.0, 0.1, 0.1, 10.0], [1.95, 0.1, 0.1, 10.0], [1.0, -0.28, 0.1, 10.0], [9.0, 0.1, 0.1, 10.0]])
     answer = log_posterior(problem, theta, rows)
     assert np.isfinite(answer[0])
     assert np.all(answer[1:] == -np.inf)

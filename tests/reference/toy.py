@@ -154,9 +154,7 @@ def exact_evidence(problem: Problem, rows: Rows) -> float:
     design = problem.model.design(rows)
     total = problem.model.covariance(rows) + (design * deviation**2) @ design.T
     residual = rows.value - design @ mean
-    return float(
-        -0.5 * (residual @ np.linalg.solve(total, residual) + np.linalg.slogdet(2 * np.pi * total)[1])
-    )
+    return float(-0.5 * (residual @ np.linalg.solve(total, residual) + np.linalg.slogdet(2 * np.pi * total)[1]))
 
 
 @dataclass(frozen=True)
