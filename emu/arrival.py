@@ -222,7 +222,7 @@ def arrive(
     return Arrived(
         time.reshape(shape),
         path.motion(values, time.reshape(shape), offset),
-        columns.reshape(-1, *shape),
+        columns.reshape(len(COLUMNS), *shape),
         start.reshape(*shape, 3),
         failed.reshape(shape),
         tube.reshape(shape),

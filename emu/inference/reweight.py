@@ -12,6 +12,7 @@ from emu.problem import Problem
 __all__ = ["Weights", "effective_size", "khat", "reweight"]
 
 Array = NDArray[np.float64]
+_SAME = 1e-9  # of log weights that differ by rounding only
 
 
 @dataclass(frozen=True, eq=False)
@@ -94,7 +95,8 @@ def khat(log_weight: Array) -> float:
         log_weight: (D,), D >= 25; minus infinity is a weight of zero.
 
     Returns:
-        k-hat; infinity where fewer than five distinct weights are left to fit.
+        k-hat; infinity where fewer than five distinct weights are left to fit; -1, the shape of a flat density
+        that ends, where the largest weights are all the same.
     """
     count = len(log_weight)
     tail = int(np.ceil(min(0.2 * count, 3 * np.sqrt(count))))
@@ -102,6 +104,8 @@ def khat(log_weight: Array) -> float:
     top = ordered[-1]
     if tail < 5 or not np.isfinite(top):
         return np.inf
+    if ordered[-tail - 1] > top - _SAME:
+        return -1.0
     cutoff = np.exp(max(ordered[-tail - 1] - top, np.log(np.finfo(float).tiny)))
     excess = np.exp(ordered[-tail:] - top) - cutoff
     excess = excess[excess > 0]

@@ -62,3 +62,8 @@ def test_khat_agrees_with_a_library():
             warnings.simplefilter("ignore")
             expected = float(psislw(log_weight.copy())[1])
         assert khat(log_weight) == pytest.approx(expected, abs=1e-3)
+
+
+def test_khat_of_equal_weights_is_no_warning():
+    """A perfect estimator has equal weights up to rounding."""
+    assert khat(1e-14 * np.random.default_rng(1).normal(size=1000)) == -1.0
