@@ -3,6 +3,10 @@
 Each curve starts on uniform nodes. Each node is predicted from its four neighbours; where that fails worst, in
 units of what can be measured, intervals are divided further. The same comparison on the final nodes says how
 well a cubic through neighbouring nodes follows the curve in between.
+
+Measured on midplane-frozen seen by the realistic campaign (600 flares, 3.8 kB each): with 96 + 64 nodes 0.15 % of
+the rows are off by more than a tenth of the campaign's best error and 0.03 % by more than all of it; with 192
+uniform nodes, for about the same work, 0.55 % and 0.18 %. All of these are orbits seen nearly edge-on.
 """
 
 from collections.abc import Callable

@@ -22,9 +22,9 @@ from training.nodes import Refined, refine
 from training.processes import in_processes
 from training.store import Layout, create, missing_chunks, write_chunk
 
-Array = NDArray[np.float64]
-
 __all__ = ["STANDARD", "layout_of", "model_text", "simulate", "simulate_problem"]
+
+Array = NDArray[np.float64]
 
 CHUNK = 500  # flares; part of the configuration: another chunk size would give other draws
 NODES = (96, 64)
@@ -185,19 +185,22 @@ def _refined(model: Model, theta: Array, layout: Layout) -> Refined:
 
 
 def _best_error(problem: Problem, kind: str) -> float:
-    """Return the smallest error a campaign gives a kind, in the unit of its stored curve."""
-    streams = problem.campaign.streams
-    flux = [stream.error[0] for stream in streams if {"flux", "Q", "U"} & set(stream.kinds)]
-    same = [stream.error[0] for stream in streams if kind in stream.kinds]
-    if kind == "flux":
-        # Stored at brightness 1: an error in the curve grows with the brightness.
-        most = [p.bounds[1] for p in problem.model.parameters if p.name == "brightness"]
-        return min(flux) / (most[0] if problem.model.standard_frame and most else 1.0)
-    if kind in ("east", "north"):
-        return min(error for s in streams if kind in s.kinds for error in s.error) / (
-            problem.campaign.target.length_unit
-        )
-    return min(same or flux)
+    """Return the smallest error a campaign gives a curve, in the unit of the stored curve."""
+    of_flux, brightest = {"flux", "Q", "U"}, 1.0
+    if problem.model.standard_frame:  # stored at brightness 1: an error of the curve grows with it
+        brightest = max((p.bounds[1] for p in problem.model.parameters if p.name == "brightness"), default=1.0)
+    found = []
+    for stream in problem.campaign.streams:
+        kinds, error = set(stream.kinds), stream.error[0]
+        if kind in ("east", "north") and kinds & {"east", "north"}:
+            found.append(error / problem.campaign.target.length_unit)
+        elif kind == "flux" and kinds & of_flux:
+            found.append(error / brightest)
+        elif kind in ("q", "u") and kinds & {"q", "u"}:
+            found.append(error)
+        elif kind in ("q", "u") and kinds & {"Q", "U"}:
+            found.append(error / brightest)
+    return min(found)
 
 
 def _standard(model: Model, theta: Array) -> Array:

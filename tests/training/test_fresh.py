@@ -10,7 +10,7 @@ from emu.families.parameters import Parameter
 from emu.families.priors import LogUniform, Uniform
 from emu.observe.campaign import parse_campaign
 from emu.observe.rows import KINDS
-from emu.problem import Problem
+from emu.problem import Problem, problem
 from tests.training.small import CAMPAIGN, SMALL, small_set
 from training.fresh import FreshFlares, StoredCurves, interpolate
 from training.simulate import layout_of, simulate_problem
@@ -97,6 +97,27 @@ def test_standing_in_the_sky_is_drawn_anew_exactly(tmp_path):
     found = StoredCurves(problem.model, stored, which).curves(theta[:, :3], rows.time)
     for kind, curve in problem.model.curves(theta[:, :3], rows.time).items():
         np.testing.assert_allclose(found[kind], curve, atol=2e-5, err_msg=kind)
+
+
+def test_real_curves_are_stored_finer_than_they_can_be_measured(tmp_path):
+    real = problem("midplane-frozen", "realistic")
+    simulate_problem(real, layout_of(real, 200, 5), tmp_path / "set", 1)
+    stored = TrainingSet.load(tmp_path / "set")
+    rng = np.random.default_rng(6)
+    which, columns = np.arange(200), len(real.model.parameters)
+    theta, rows = FreshFlares(real, stored).batch(which, rng)
+    found = StoredCurves(real.model, stored, which).curves(theta[:, :columns], rows.time)
+    exact = real.model.curves(theta[:, :columns], rows.time)
+    brightness = theta[:, [real.index("brightness")]]
+    length = real.campaign.target.length_unit
+    best = {"flux": 0.02, "q": 0.01, "u": 0.01, "east": 20.0 / length, "north": 20.0 / length}
+    off = np.zeros(rows.time.shape)
+    for kind, error in best.items():
+        here = rows.mask & (rows.kind == KINDS.index(kind))
+        off = np.where(here, np.abs(found[kind] - exact[kind]) / error, off)
+    assert np.mean(off[rows.mask] > 0.1) < 0.004  # all but a few rows of orbits seen edge-on
+    assert np.median(off[rows.mask]) < 1e-3
+    assert brightness.std() > 0.1  # fluxes were scaled, or the comparison would be of nothing
 
 
 def test_fresh_flares_and_the_model_s_own_follow_one_law(tmp_path):
