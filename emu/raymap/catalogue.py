@@ -5,10 +5,11 @@ from __future__ import annotations
 from emu.errors import UserError
 from emu.raymap.base import RayMap
 from emu.raymap.exact import ExactRays
+from emu.raymap.learned import LearnedRays
 
 __all__ = ["find_raymap"]
 
-_RAYMAPS: dict[str, RayMap] = {"exact": ExactRays()}
+_RAYMAPS: dict[str, RayMap] = {"exact": ExactRays(), "learned": LearnedRays()}
 
 
 def find_raymap(name: str) -> RayMap:

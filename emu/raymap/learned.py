@@ -1,0 +1,91 @@
+"""The learned ray map: splines and polynomials where they can be trusted, the exact solve elsewhere."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass, fields
+
+import numpy as np
+
+from emu.raymap.base import Array, Flags, RayBundle
+from emu.raymap.chart import Chart, shipped
+from emu.raymap.exact import ExactRays
+from emu.raymap.learned_kernel import evaluate
+
+__all__ = ["LearnedBundle", "LearnedRays"]
+
+_LEAST_IMPACT = 1e-12
+_NEAR_CAUSTIC = 0.5  # rad: no tube is wider
+
+
+@dataclass(frozen=True)
+class LearnedBundle(RayBundle):
+    """Add to the bundle which rays were solved exactly, because the learned map is not trusted there.
+
+    Args:
+        exact: (N,) bool.
+    """
+
+    exact: Flags
+
+
+@dataclass(frozen=True)
+class LearnedRays:
+    """Evaluate what was learned of the rays; ray by ray, the exact solve takes over outside the trust domain.
+
+    Args:
+        charts: gives the learned numbers of image orders 0 and 1; called when first needed.
+    """
+
+    charts: Callable[[], tuple[Chart, Chart]] = shipped
+
+    def trace(
+        self, spin: Array, inclination: Array, r: Array, n: Array, order: int, start: Array | None = None
+    ) -> LearnedBundle:
+        """Return the rays of one image order, as `RayMap` says; only exact rays outside the table use a start."""
+        columns, trusted = self._learned(spin, inclination, r, n, order)
+        swept = 4.0 * np.arctan(columns[7])
+        # Mino time of a ray without spin
+        tau = swept / np.maximum(np.hypot(columns[0], columns[1]), _LEAST_IMPACT)
+        begin = np.stack((columns[0], columns[1], tau), axis=-1)
+        bundle = LearnedBundle(*columns[:7], np.zeros(len(r), dtype=bool), swept, begin, ~trusted)
+        if not np.all(trusted):
+            (index,) = np.nonzero(bundle.exact)
+            near = begin[index]
+            lost = ~self._within(spin[index], r[index], columns[7, index], order)
+            near[lost] = np.nan if start is None else start[index[lost]]
+            exact = ExactRays().trace(spin[index], inclination[index], r[index], n[index], order, near)
+            for field in fields(exact):
+                getattr(bundle, field.name)[index] = getattr(exact, field.name)
+        return bundle
+
+    def in_tube(
+        self, start: Array, swept: Array, spin: Array, inclination: Array, r: Array, n: Array, order: int
+    ) -> Flags:
+        """Tell which traced sources lie within a caustic tube; the trust domain has none."""
+        inside = np.zeros(len(r), dtype=bool)
+        (near,) = np.nonzero(np.abs(swept - np.pi * (order + 1)) < _NEAR_CAUSTIC)
+        if len(near):
+            _, trusted = self._learned(spin[near], inclination[near], r[near], n[near], order)
+            near = near[~trusted]
+        if len(near):
+            traced = (start[near], swept[near], spin[near], inclination[near], r[near], n[near])
+            inside[near] = ExactRays().in_tube(*traced, order)
+        return inside
+
+    def _learned(self, spin: Array, inclination: Array, r: Array, n: Array, order: int) -> tuple[Array, Flags]:
+        """Return the columns (8, N) of `evaluate` and which are trusted."""
+        chart = self.charts()[order]
+        columns, trusted = np.empty((8, len(r))), np.empty(len(r), dtype=bool)
+        evaluate(
+            np.ascontiguousarray(spin), np.cos(inclination), np.sin(inclination), np.ascontiguousarray(r),
+            np.ascontiguousarray(n), 1.0 - 2.0 * order, chart.drag, chart.zones, chart.layout, chart.table,
+            chart.rows, chart.counts, chart.trust, columns, trusted,
+        )  # fmt: skip
+        return columns, trusted
+
+    def _within(self, spin: Array, r: Array, x: Array, order: int) -> Flags:
+        """Tell which rays are within the table, be they close to the caustic, so that they may start from it."""
+        least, most, fastest, furthest = self.charts()[order].trust[:4]
+        root_u = r**-0.5
+        return (root_u >= least) & (root_u <= most) & (np.abs(spin) <= fastest) & (x <= furthest)
