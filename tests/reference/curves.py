@@ -11,9 +11,9 @@ import numpy as np
 from tests.reference.coordinates import jacobian, place
 from tests.reference.emitter import motion, stokes
 from tests.reference.hamiltonian import far_radius, metric
-from tests.reference.images import Image, NoImage, find_image, finish, refine
+from tests.reference.images import Image, NoImage, find_image, finish, has_twin, refine
 
-__all__ = ["curves", "screen_angle"]
+__all__ = ["curves", "is_twin", "screen_angle"]
 
 KINDS = ("flux", "q", "u", "east", "north", "emission_time", "redshift", "magnification")
 Offset = tuple[float, float, float]
@@ -92,9 +92,7 @@ def _row(values: dict[str, float], image: Image, offset: Offset, weight: float) 
     at = motion(values, t, offset)
     sight = stokes(values, t, at, image.momentum, image.magnification)
     axis = math.radians(values["axis_angle"])
-    chi = axis + screen_angle(
-        image, sight.vector, jacobian(at.r, at.theta, at.phi, values["spin"]), values["spin"]
-    )
+    chi = axis + screen_angle(image, sight.vector, jacobian(at.r, at.theta, at.phi, values["spin"]), values["spin"])
     alpha, beta = image.unknowns[:2]
     east = -alpha * math.cos(axis) + beta * math.sin(axis)
     north = alpha * math.sin(axis) + beta * math.cos(axis)
@@ -140,8 +138,8 @@ def curves(
         spot_nodes: Gauss-Hermite nodes a direction for a spot.
 
     Returns:
-        flux, q, u, east, north, emission_time, redshift, magnification (T,) and
-        `order_magnification` (orders, T).
+        flux, q, u, east, north, emission_time, redshift, magnification (T,);
+        `order_magnification` (orders, T); `order_light` (orders, T, 5): I, Q, U, I east, I north of each.
 
     Raises:
         NoImage: a ray could not be solved.
@@ -170,7 +168,7 @@ def curves(
         result[kind] = light[:, column] / light[:, 0]
     for kind, column in (("emission_time", 5), ("redshift", 6), ("magnification", 7)):
         result[kind] = centre[0, :, column]
-    return result | {"order_magnification": centre[:, :, 7]}
+    return result | {"order_magnification": centre[:, :, 7], "order_light": sums[:, :, :5]}
 
 
 def _of_family(family: str, parameters: dict[str, float]) -> dict[str, float]:
@@ -187,3 +185,14 @@ def _of_family(family: str, parameters: dict[str, float]) -> dict[str, float]:
     if set(parameters) & inner_names != wanted:
         raise ValueError(f"{family} takes {sorted(wanted)}")
     return {name: float(value) for name, value in parameters.items()}
+
+
+def is_twin(family: str, parameters: dict[str, float], time: float, order: int) -> bool:
+    """Tell whether the light of `order` that arrives at `time` left from within a caustic tube."""
+    values = _of_family(family, parameters)
+    far = far_radius(30.0)
+    zero = _Track(values, (0.0, 0.0, 0.0), 0, far).at_emission(0.0).delay
+    track = _Track(values, (0.0, 0.0, 0.0), order, far)
+    image = track.at_arrival(time + zero, None)
+    at = motion(values, float(image.unknowns[3]))
+    return has_twin(track.spin, track.inclination, at.r, at.theta, at.phi, order, image.unknowns)

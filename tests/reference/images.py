@@ -17,7 +17,7 @@ from scipy.integrate import solve_ivp
 from tests.reference.coordinates import horizon, jacobian, place, time_shift
 from tests.reference.hamiltonian import Ray, far_radius, shoot, slopes, start
 
-__all__ = ["Image", "NoImage", "find_image", "refine", "swept_impact"]
+__all__ = ["Image", "NoImage", "find_image", "has_twin", "refine"]
 
 
 class NoImage(Exception):
@@ -73,9 +73,7 @@ def swept_impact(r: float, angle: float) -> float:
     return 0.5 * (low + high)
 
 
-def _first_guess(
-    inclination: float, r: float, theta: float, phi: float, order: int, far: float
-) -> np.ndarray:
+def _first_guess(inclination: float, r: float, theta: float, phi: float, order: int, far: float) -> np.ndarray:
     """Return (alpha, beta, length) without spin: bisection for b, then the nearest point of that ray."""
     toward = np.array([math.sin(inclination), 0.0, math.cos(inclination)])
     sin = math.sin(theta)
@@ -172,8 +170,13 @@ def _follow(
     guess: np.ndarray,
     route: Callable[[float], tuple[float, float, float, float]],
     far: float,
+    shortest: float = 5e-4,
 ) -> tuple[np.ndarray, Ray]:
-    """Follow an image along route(s) -> (spin, r, theta, phi), 0 <= s <= 1, with linear prediction."""
+    """Follow an image along route(s) -> (spin, r, theta, phi), 0 <= s <= 1, with linear prediction.
+
+    Raises:
+        NoImage: the image is lost at a step of `shortest`.
+    """
     s, step, now, slope = 0.0, 0.05, np.append(guess, 0.0), np.zeros(4)
     spin, r, theta, phi = route(0.0)
     now, _ = refine(spin, inclination, now, lambda t: place(0.0, r, theta, phi, spin), None, far, 1e-9)
@@ -194,7 +197,7 @@ def _follow(
             )
         except NoImage:
             step *= 0.4
-            if step < 5e-4:
+            if step < shortest:
                 raise
             continue
         slope, now, s, step = (new - now) / (following - s), new, following, 1.7 * step
@@ -223,11 +226,32 @@ def find_image(spin: float, inclination: float, r: float, theta: float, phi: flo
                 inclination, guess, lambda s, d=detour: (s * spin, radius(s * spin), theta, phi + d), far
             )
             if detour != 0.0:
-                now, ray = _follow(
-                    inclination, now[:3], lambda s, d=detour: (spin, r, theta, phi + d * (1.0 - s)), far
-                )
+                now, ray = _follow(inclination, now[:3], lambda s, d=detour: (spin, r, theta, phi + d * (1.0 - s)), far)
         except NoImage:
             continue
         if ray.index == order:
             return finish(spin, inclination, now, r, theta, phi, far)
     raise NoImage(f"order {order} of r = {r}, theta = {theta}, phi = {phi}, spin {spin}, i = {inclination}")
+
+
+def has_twin(
+    spin: float, inclination: float, r: float, theta: float, phi: float, order: int, found: np.ndarray
+) -> bool:
+    """Tell whether a point lies in a caustic tube: whether it has a second image of the same order.
+
+    Images of the order are followed to the point from either side in azimuth, the direction in which frame
+    dragging spreads a caustic; inside a tube they arrive at different images.
+
+    Args:
+        found: unknowns of the image already known (alpha, beta first).
+    """
+    far = far_radius(r)
+    for detour in (1.0, -1.0, 0.5, -0.5):
+        try:
+            begin = find_image(spin, inclination, r, theta, phi + detour, order).unknowns[:3]
+            now, ray = _follow(inclination, begin, lambda s, d=detour: (spin, r, theta, phi + d * (1.0 - s)), far, 0.01)
+        except NoImage:
+            continue
+        if ray.index == order and float(np.abs(now[:2] - found[:2]).max()) > 1e-4 * max(1.0, r):
+            return True
+    return False

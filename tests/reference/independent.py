@@ -8,10 +8,10 @@ import math
 
 import numpy as np
 
-from tests.reference.curves import curves
+from tests.reference.curves import curves, is_twin
 from tests.reference.images import NoImage, find_image
 
-__all__ = ["NoImage", "curves", "trace"]
+__all__ = ["NoImage", "curves", "is_twin", "trace"]
 
 
 def trace(
@@ -29,9 +29,7 @@ def trace(
     Raises:
         NoImage: no such image was found.
     """
-    image = find_image(
-        spin, math.radians(inclination_deg), r, math.radians(theta_deg), math.radians(phi_deg), order
-    )
+    image = find_image(spin, math.radians(inclination_deg), r, math.radians(theta_deg), math.radians(phi_deg), order)
     return (
         float(image.unknowns[0]),
         float(image.unknowns[1]),
