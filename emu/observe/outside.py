@@ -49,6 +49,8 @@ def _whole(season: Season, minutes: NDArray[np.float64], kind: NDArray[np.int8])
             f"t_ref is {abs(middle):.1f} minutes from the middle of its rows, where the campaign has it; "
             "leave t_ref out"
         )
+    elif np.abs(minutes).max() > 0.5 * high * (1.0 + _ROUNDING):
+        yield f"a row is {np.abs(minutes).max():.1f} minutes from t_ref; at most {0.5 * high:.1f} in the campaign"
     known = {name for stream in season.streams for name in stream.kinds}
     for name in dict.fromkeys(KINDS[code] for code in kind):
         if name not in known:

@@ -6,8 +6,6 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
 
-import numpy as np
-
 from emu.errors import UserError
 from emu.observe.campaign import Campaign
 from emu.observe.flare import Flare
@@ -18,8 +16,6 @@ from emu.report.posterior import Unanswered
 from emu.units import Target
 
 __all__ = ["Found", "Inputs", "screen"]
-
-_ROUNDING = 1e-9
 
 
 @dataclass(frozen=True)
@@ -87,9 +83,7 @@ def _judged(flare: Flare, campaign: Campaign, target: Target) -> Found | Unanswe
         rows = flare.rows(target, campaign.flux_unit)
     except UserError as problem:
         return Unanswered(flare.name, "read", str(problem))
-    reasons = list(campaign.outside(rows))
-    if not reasons and np.abs(rows.time).max() > campaign.half_span * (1.0 + _ROUNDING):
-        reasons.append("t_ref is too far from the middle of its rows; leave t_ref out")
+    reasons = campaign.outside(rows)
     if reasons:
         where = f"{flare.where}: outside campaign {campaign.name}: {'; '.join(reasons)}"
         return Unanswered(flare.name, "campaign", where)
