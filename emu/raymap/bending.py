@@ -5,7 +5,8 @@ caustic, 2 arctan(a ε(u)(1 − o·n)/4), to n₂. In the plane of o and n₂ (a
 to o, t = N × n₂) the spin has the components s₁ along o + n₂, s₂ along n₂ − o and s_N. What is learned varies
 slowly with √u, x = tan(ψ/4) and the spin's components: the delay plus r cos ψ, the screen position along m
 less r sin ψ, the photon's direction along r and t for the zero-angular-momentum observer, μ |cos ψ/2|, and the
-screen position and the direction along N. All formulas are algebraic, so that loops over rays use vector registers.
+screen position and the direction along N, both times cos ψ/2, as they grow like the caustic's width over the distance
+from it. All formulas are algebraic, so that loops over rays use vector registers.
 """
 
 from __future__ import annotations
@@ -67,7 +68,7 @@ def from_bending(spin: Array, cos_i: Array, sin_i: Array, r: Array, rows: Array,
     Args:
         spin, cos_i, sin_i, r: (N,). rows: (ROWS, N) of `into_bending`.
         learned: (OUTPUTS, N): delay and position less their leading terms, direction along r and t, μ |cos ψ/2|, then
-            position and direction along N.
+            position and direction along N times cos ψ/2.
         out: (7, N) receives α, β, delay, p_r, p_θ, p_φ/sin θ, μ.
     """
     for k in range(len(spin)):
@@ -75,11 +76,12 @@ def from_bending(spin: Array, cos_i: Array, sin_i: Array, r: Array, rows: Array,
         mx, my, mz, nx, ny, nz = rows[2, k], rows[3, k], rows[4, k], rows[5, k], rows[6, k], rows[7, k]
         x, y, z = rows[8, k], rows[9, k], rows[10, k]
         along = learned[1, k] + 2.0 * radius * half_s * half_c
-        across = learned[5, k]
+        behind = 1.0 / half_c
+        across = learned[5, k] * behind
         out[0, k] = along * my + across * ny
         out[1, k] = (along * mz + across * nz) * sin_i[k] - (along * mx + across * nx) * cos_i[k]
         out[2, k] = learned[0, k] - radius * (half_c * half_c - half_s * half_s)
-        d_r, d_t, d_n = learned[2, k], learned[3, k], learned[6, k]
+        d_r, d_t, d_n = learned[2, k], learned[3, k], learned[6, k] * behind
         tx, ty, tz = ny * z - nz * y, nz * x - nx * z, nx * y - ny * x
         dx, dy, dz = d_t * tx + d_n * nx, d_t * ty + d_n * ny, d_t * tz + d_n * nz
         length = 1.0 / math.sqrt(d_r * d_r + dx * dx + dy * dy + dz * dz)
@@ -91,4 +93,4 @@ def from_bending(spin: Array, cos_i: Array, sin_i: Array, r: Array, rows: Array,
         lapse, omega, root_rr, root_tt, varpi, _delta = frame_at(a, radius, z)
         energy = 1.0 / (lapse + omega * varpi * rho * around)
         out[3, k], out[4, k], out[5, k] = energy * root_rr * d_r * length, energy * root_tt * polar, energy * varpi * around
-        out[6, k] = learned[4, k] / abs(half_c)
+        out[6, k] = learned[4, k] * abs(behind)

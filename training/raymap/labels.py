@@ -103,7 +103,7 @@ def learned_of(bundle: RayBundle, places: Places, order: int, drag: Array) -> tu
         k[0],
         np.sum(sideways * np.cross(normal, n2, axis=0), axis=0),
         bundle.magnification * np.abs(half_c),
-        np.sum(screen * normal, axis=0),
-        np.sum(sideways * normal, axis=0),
+        np.sum(screen * normal, axis=0) * half_c,
+        np.sum(sideways * normal, axis=0) * half_c,
     )
     return np.stack(learned, axis=-1), rows
