@@ -18,6 +18,7 @@ from emu.observe.rows import RowBatch
 __all__ = ["NeuralEstimator"]
 
 Array = NDArray[np.float64]
+_POINTS_AT_ONCE = 8192
 _FLARES_AT_ONCE = 8  # fixed, so that the draws of a flare depend neither on threads nor on memory
 
 
@@ -107,10 +108,14 @@ class NeuralEstimator:
         points = theta[:, None] if single else theta
         context = self.embed(batch)
         log_q = np.empty(points.shape[:2])
-        for flare, z in enumerate(self.prior.to_gauss(points)):
+        at_once = max(1, _POINTS_AT_ONCE // max(1, points.shape[1]))
+        for start in range(0, len(points), at_once):
+            part = slice(start, start + at_once)
+            z = self.prior.to_gauss(points[part])
             with torch.no_grad():
-                log_density = self.density.net(context[flare]).log_prob(torch.from_numpy(z).float())
-            log_q[flare] = log_density.numpy() - self.prior.log_jacobian(z)
+                flow = self.density.net(context[part])
+                log_density = flow.log_prob(torch.from_numpy(z.swapaxes(0, 1)).float())
+            log_q[part] = log_density.numpy().T - self.prior.log_jacobian(z)
         bounds = np.array([parameter.bounds for parameter in self.parameters])
         inside = ((points >= bounds[:, 0]) & (points <= bounds[:, 1])).all(axis=-1)
         log_q = np.where(inside, log_q, -np.inf)

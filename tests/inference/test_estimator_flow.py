@@ -69,7 +69,7 @@ def test_it_learns_a_bent_density():
         x = torch.randn(count, 1)
         return c, torch.cat([x, c * x**2 + 0.3 * torch.randn(count, 1)], dim=1)
 
-    for _ in range(250):
+    for _ in range(150):
         c, z = banana(256)
         optimizer.zero_grad()
         (-flow(c).log_prob(z)).mean().backward()

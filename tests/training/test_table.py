@@ -1,11 +1,13 @@
 """The tables: every family once, nothing twice, numbers that come from the runs themselves."""
 
 import json
+from dataclasses import replace
 
 import pytest
 
+from emu.errors import UserError
 from tests.training.small import RECIPE
-from training import table as module
+from training.checks import report as checks_report
 from training.choices import choices
 from training.simulate import simulate
 from training.table import Plan, table
@@ -30,15 +32,15 @@ def test_a_family_is_simulated_fitted_and_checked(tmp_path, plan):
     assert "| toy | 4 | 1,000 | 0 |" in (tmp_path / "out" / "table.md").read_text()
 
 
-def test_finished_work_is_not_done_again(tmp_path, plan, monkeypatch):
+def test_finished_work_is_not_done_again_and_another_plan_is_refused(tmp_path, plan, monkeypatch):
     first = table(tmp_path / "out", plan, ["toy"], workers=1)
-    from training.checks import report
-
-    monkeypatch.setattr(report, "run_checks", lambda *_, **__: pytest.fail("checked twice"))
+    monkeypatch.setattr(checks_report, "run_checks", lambda *_, **__: pytest.fail("checked twice"))
     again = table(tmp_path / "out", plan, ["toy"], workers=1)
     assert again[0].nats_over_prior == first[0].nats_over_prior
     assert again[0].fit_minutes == first[0].fit_minutes
     assert again[0].passed == first[0].passed
+    with pytest.raises(UserError, match="another flares"):
+        table(tmp_path / "out", replace(plan, flares=1200), ["toy"], workers=1)
 
 
 def test_choices_are_compared_at_equal_cost(tmp_path, toys):
@@ -55,10 +57,3 @@ def test_choices_are_compared_at_equal_cost(tmp_path, toys):
         assert line.draws_per_second > 1000
     assert choices(tmp_path / "set", [chosen, str(small)], tmp_path / "out", minutes=0.05) == lines
     assert (tmp_path / "out" / "choices.md").read_text().count("\n") == 4
-
-
-def test_another_plan_for_the_same_set_is_refused(tmp_path, plan):
-    table(tmp_path / "out", plan, ["toy"], workers=1)
-    other = Plan(**{**module.asdict(plan), "flares": 1200})
-    with pytest.raises(ValueError, match="another flares"):
-        table(tmp_path / "out", other, ["toy"], workers=1)
