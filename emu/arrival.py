@@ -43,6 +43,11 @@ class Arrived:
     failed: NDArray[np.bool_]
     tube: NDArray[np.bool_]
 
+    @property
+    def guess(self) -> tuple[Array, Array]:
+        """Return times (N, T) and starts (N, T, 3) for near emitters, NaN starts where nothing was found."""
+        return self.time, np.where(self.failed[..., None], np.nan, self.start)
+
 
 @dataclass(frozen=True)
 class _Traced:
@@ -145,10 +150,10 @@ def _first_guess(
     nodes = int(np.clip(count // 3, 5, 32))
     ends = np.stack((times.min(axis=1), times.max(axis=1)), axis=1)
     both = np.repeat(np.arange(n), 2)
-    rough = _rough_times(path, _pick(values, path, both), offset, ends.ravel()).reshape(n, 2)
+    rough = _rough_times(path, _pick(values, path, both), offset.of(both), ends.ravel()).reshape(n, 2)
     grid = (rough[:, :1] - 2.0) + (rough[:, 1:] - rough[:, :1] + 4.0) * np.linspace(0.0, 1.0, nodes)
     index = np.repeat(np.arange(n), nodes)
-    traced = _trace(path, _pick(values, path, index), offset, grid.ravel(), raymap, order, None)
+    traced = _trace(path, _pick(values, path, index), offset.of(index), grid.ravel(), raymap, order, None)
     arrivals = grid + traced.columns[2].reshape(n, nodes) - delay_0[:, None]
     slopes = np.maximum(1.0 + traced.delay_rate.reshape(n, nodes), 0.05)
     starts = np.where(traced.failed[:, None], np.nan, traced.start).reshape(n, nodes, 3)
@@ -163,7 +168,7 @@ def _converge(
     """Solve time + delay = goal for M rays from a guess of times (M,) and starts (M, 3), each ray until it is done.
 
     Args:
-        values: of each ray, (M,).
+        values, offset: of each ray, (M,).
 
     Returns:
         times (M,), columns (8, M), starts (M, 3), failed (M,).
@@ -173,7 +178,7 @@ def _converge(
     active = np.arange(time.size)
     for _ in range(_MOST_STEPS):
         picked = {name: value[active] for name, value in values.items()}
-        traced = _trace(path, picked, offset, time[active], raymap, order, start[active])
+        traced = _trace(path, picked, offset.of(active), time[active], raymap, order, start[active])
         gap = time[active] + traced.columns[2] - goal[active]
         done = (np.abs(gap) < _TOLERANCE) & ~traced.failed
         columns[:, active], start[active] = traced.columns, traced.start
@@ -194,29 +199,27 @@ def arrive(
     delay_0: Array,
     raymap: RayMap,
     order: int,
-    near: Arrived | None = None,
+    near: tuple[Array, Array] | None = None,
 ) -> Arrived:
     """Solve for the light that arrives at given times.
 
     Args:
-        path: of the emitters. values: rad, GM/c2, GM/c3, each (N, 1). offset: of the point from the centre.
+        path: of the emitters. values: rad, GM/c2, GM/c3, each (N, 1). offset: of the points from the centres.
         times: (N, T) arrival times counted from t_ref, GM/c3.
         delay_0: (N,) from `reference_delay`.
         raymap: how rays are found. order: image order.
-        near: the light of a near point, to start from.
+        near: the `guess` of near emitters, to start from.
 
     Returns:
         Emission times to 1e-5 GM/c3 and the rays there; a time that does not converge is a failure.
     """
     n, count = shape = times.shape
-    if near is None:
-        guess, begin = _first_guess(path, values, offset, times, delay_0, raymap, order)
-    else:
-        guess, begin = near.time, np.where(near.failed[..., None], np.nan, near.start)
-    goal, each = times.ravel() + np.repeat(delay_0, count), _pick(values, path, np.repeat(np.arange(n), count))
+    guess, begin = near or _first_guess(path, values, offset, times, delay_0, raymap, order)
+    emitter = np.repeat(np.arange(n), count)
+    goal, each, points = times.ravel() + delay_0[emitter], _pick(values, path, emitter), offset.of(emitter)
     start_from = (guess.ravel(), begin.reshape(-1, 3))
-    time, columns, start, failed = _converge(path, each, offset, start_from, goal, raymap, order)
-    motion = path.motion(each, time, offset)
+    time, columns, start, failed = _converge(path, each, points, start_from, goal, raymap, order)
+    motion = path.motion(each, time, points)
     swept = columns[7] * ~failed
     tube = raymap.in_tube(start, swept, each["spin"], each["inclination"], motion.r, motion.direction, order)
     return Arrived(

@@ -17,6 +17,7 @@ __all__ = ["assemble", "in_radians"]
 Array = NDArray[np.float64]
 # Values given in degrees at every public surface.
 _ANGLES = frozenset({"inclination", "axis_angle", "phase", "tilt", "pitch", "turn", "roll"})
+_RAYS_AT_ONCE = 16_384
 _SUMS = ("flux", "q", "u", "east", "north")
 
 
@@ -56,13 +57,38 @@ def _light(source: Source, values: Values, arrived: Arrived) -> tuple[Array, NDA
     return total, failed
 
 
-def _points(values: Values, spot_points: int | None) -> tuple[list[Offset], Array]:
-    """Return the offsets of a spot's points from its centre, which comes first, and their weights."""
+def _points(values: Values, spot_points: int | None) -> tuple[Array, Array]:
+    """Return the offsets (P, 3) of a spot's points from its centre, which comes first, and their weights (P,)."""
     if "spot_size" not in values:
-        return [Offset()], np.ones(1)
+        return np.zeros((1, 3)), np.ones(1)
     side = default_side(float(np.max(values["spot_size"]))) if spot_points is None else max(1, round(spot_points ** (1.0 / 3.0)))
-    offsets, weights = cloud_points(side + 1 - side % 2)
-    return [Offset(*map(float, offset)) for offset in offsets], weights
+    return cloud_points(side + 1 - side % 2)
+
+
+def _groups(points: int, rays: int) -> list[slice]:
+    """Cut a spot's points into the centre and groups that are solved together, so that memory stays flat."""
+    step = max(1, _RAYS_AT_ONCE // rays)
+    return [slice(0, 1), *(slice(first, min(first + step, points)) for first in range(1, points, step))]
+
+
+def _tiled(array: Array, count: int) -> Array:
+    """Repeat an array `count` times along its first axis."""
+    return np.tile(array, (count, *(1,) * (array.ndim - 1)))
+
+
+def _solve_points(
+    source: Source, values: Values, offsets: Array, times: Array, delay_0: Array, raymap: RayMap, order: int,
+    near: tuple[Array, Array] | None,
+) -> tuple[Arrived, Array, NDArray[np.bool_]]:
+    """Find the light of P points of N emitters: point by point all emitters, P N rows; see `arrive` and `_light`."""
+    count, n = len(offsets), len(times)
+    many = {name: _tiled(value, count) for name, value in values.items()}
+    offset = Offset(*np.repeat(offsets, n, axis=0).T[..., None])
+    guess = None if near is None else (_tiled(near[0], count), _tiled(near[1], count))
+    arrived = arrive(
+        source.path, many, offset, _tiled(times, count), _tiled(delay_0, count), raymap, order, guess
+    )
+    return arrived, *_light(source, many, arrived)
 
 
 def assemble(
@@ -95,14 +121,16 @@ def assemble(
     sums = np.zeros((5, *times.shape))
     of_centre: dict[str, Array] = {}
     for order in range(orders):
-        near: Arrived | None = None
-        for offset, weight in zip(offsets, weights, strict=True):
-            arrived = arrive(source.path, radians, offset, times, delay_0, raymap, order, near)
-            near = near or arrived
-            total, failed = _light(source, radians, arrived)
-            sums += weight * total[:5]
-            failures += failed.sum(axis=1)
-            tube += arrived.tube.sum(axis=1)
+        near: tuple[Array, Array] | None = None
+        for group in _groups(len(offsets), times.size):
+            arrived, total, failed = _solve_points(
+                source, radians, offsets[group], times, delay_0, raymap, order, near
+            )
+            near = near or arrived.guess
+            shape = (-1, len(offsets[group]), *times.shape)
+            sums += np.einsum("p,kpnt->knt", weights[group], total[:5].reshape(shape))
+            failures += failed.reshape(shape).sum(axis=(0, 1, 3))
+            tube += arrived.tube.reshape(shape).sum(axis=(0, 1, 3))
             if not of_centre:
                 of_centre = {"emission_time": arrived.time, "redshift": total[5], "magnification": total[6]}
     flux = sums[0]

@@ -8,6 +8,7 @@ from dataclasses import dataclass, fields
 import numpy as np
 
 from emu.raymap.base import Array, Flags, RayBundle
+from emu.raymap.bending import ROWS, into_bending
 from emu.raymap.chart import Chart, shipped
 from emu.raymap.exact import ExactRays
 from emu.raymap.learned_kernel import evaluate
@@ -15,7 +16,7 @@ from emu.raymap.learned_kernel import evaluate
 __all__ = ["LearnedBundle", "LearnedRays"]
 
 _LEAST_IMPACT = 1e-12
-_NEAR_CAUSTIC = 0.5  # rad: no tube is wider
+_TUBE = 0.3
 
 
 @dataclass(frozen=True)
@@ -62,15 +63,25 @@ class LearnedRays:
     def in_tube(
         self, start: Array, swept: Array, spin: Array, inclination: Array, r: Array, n: Array, order: int
     ) -> Flags:
-        """Tell which traced sources lie within a caustic tube; the trust domain has none."""
+        """Tell which traced sources lie within a caustic tube.
+
+        The exact test is dear, so for order 0 only sources are put to it that are closer to the shifted caustic than
+        `_TUBE` u (spin across the line of sight)^2, many times the width of the tube; order 1 ends at 360 degrees,
+        where every ray is exact.
+        """
+        suspect = swept > (order + 0.5) * np.pi
+        if order == 0 and np.any(suspect):
+            (near,) = np.nonzero(suspect)
+            rows = np.empty((ROWS, len(near)))
+            where = (spin[near], np.cos(inclination[near]), np.sin(inclination[near]), r[near] ** -0.5, n[near])
+            into_bending(*where, 1.0, self.charts()[0].drag, rows)
+            suspect[near] = 2.0 * rows[0] < _TUBE / r[near] * (rows[11] ** 2 + rows[13] ** 2)
         inside = np.zeros(len(r), dtype=bool)
-        (near,) = np.nonzero(np.abs(swept - np.pi * (order + 1)) < _NEAR_CAUSTIC)
+        (near,) = np.nonzero(suspect)
         if len(near):
-            _, trusted = self._learned(spin[near], inclination[near], r[near], n[near], order)
-            near = near[~trusted]
-        if len(near):
-            traced = (start[near], swept[near], spin[near], inclination[near], r[near], n[near])
-            inside[near] = ExactRays().in_tube(*traced, order)
+            inside[near] = ExactRays().in_tube(
+                start[near], swept[near], spin[near], inclination[near], r[near], n[near], order
+            )
         return inside
 
     def _learned(self, spin: Array, inclination: Array, r: Array, n: Array, order: int) -> tuple[Array, Flags]:

@@ -60,11 +60,19 @@ class Motion:
 
 @dataclass(frozen=True)
 class Offset:
-    """Displace one point of a spot from the centre along R, R0 phi and z, in units of the spot's size."""
+    """Displace points of a spot from its centre along R, R0 phi and z, in units of the spot's size.
 
-    cylinder: float = 0.0
-    around: float = 0.0
-    height: float = 0.0
+    Each is a number, or an array that broadcasts with the emission times: one entry an emitter.
+    """
+
+    cylinder: float | Array = 0.0
+    around: float | Array = 0.0
+    height: float | Array = 0.0
+
+    def of(self, index: NDArray[np.int64]) -> Offset:
+        """Return the offsets of the emitters `index`, (M,), where they differ between emitters."""
+        parts = (self.cylinder, self.around, self.height)
+        return Offset(*(part.ravel()[index] if isinstance(part, np.ndarray) else part for part in parts))
 
 
 class Path(Protocol):

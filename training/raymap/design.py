@@ -91,4 +91,4 @@ INDIRECT = (
     Zone(3.0, 5.5, 13, 0.85, 2.6, 62, 8),
 )
 #: One an image order. Chosen on points that no check uses, so that the promised accuracy holds with room.
-TRUST = (Trust(2.6, 110.0, 0.998, 181.0, 0.03, 0.6), Trust(3.0, 110.0, 0.998, 270.0, 0.03, 0.6))
+TRUST = (Trust(2.6, 110.0, 0.998, 181.0, 0.035, 0.7), Trust(3.0, 110.0, 0.998, 270.0, 0.035, 0.7))
