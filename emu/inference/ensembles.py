@@ -132,7 +132,7 @@ def gather(plan: EnsemblePlan, blocks: list[list[Block]]) -> Ensembles:
     )
 
 
-def ensembles(problem: Problem, rows: Rows, *, start: Draws | None = None, walkers: int = 64,
+def ensembles(problem: Problem, rows: Rows, *, start: Draws | None = None, walkers: int = 40,
               steps: int = 6000, count: int = 4, seed: int, progress: Progress | None = None) -> Ensembles:
     """Run independent ensembles until they agree, or for a number of steps.
 
@@ -140,7 +140,7 @@ def ensembles(problem: Problem, rows: Rows, *, start: Draws | None = None, walke
         problem: what may have happened and what was measured.
         rows: the flare.
         start: draws of roughly the posterior; a short nested run where there are none.
-        walkers: in an ensemble; raised to twice the number of parameters where it is less.
+        walkers: in an ensemble; raised to a little above twice the number of parameters.
         steps: at most; agreement is looked at every 500.
         count: ensembles.
         seed: of all randomness.
@@ -149,9 +149,9 @@ def ensembles(problem: Problem, rows: Rows, *, start: Draws | None = None, walke
     Returns:
         Chains without burn-in, and how well they agree. Look at `converged`.
     """
-    begin = start if start is not None else nested(problem, rows, live=250, seed=seed, progress=progress)
+    begin = start if start is not None else nested(problem, rows, live=250, walks=30, seed=seed, progress=progress)
     posterior = CountedPosterior(problem, rows)
-    walkers = max(walkers, 2 * len(problem.parameters))
+    walkers = max(walkers, 2 * len(problem.parameters) + 2)
     plan = plan_ensembles(posterior, begin, count=count, walkers=walkers, seed=seed)
     blocks: list[list[Block]] = [[] for _ in range(count)]
     found, made = None, 0

@@ -7,6 +7,7 @@ among processes but moves them together, which suits a likelihood that is cheap 
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
@@ -31,17 +32,21 @@ class LockstepWalk(RWalkSampler):
         return list(super().prepare_sampler(**kwargs))
 
 
+@dataclass(frozen=True)
 class LockstepPool:
-    """Move all points of a queue together.
+    """Move all points of a queue together, uniformly in the unit cube within the likelihood bound.
+
+    Proposals fitted to the live points more closely than these two were tried and given up: an
+    independent proposal with some hundred coefficients knows its own live points too well, and
+    raised ln Z by several units in a closed-form case of fifteen parameters.
 
     Args:
         log_likelihood: map u (K, P) in the unit cube to (K,).
         periodic: (P,) True where 0 and 1 are the same.
     """
 
-    def __init__(self, log_likelihood: Callable[[Array], Array], periodic: NDArray[np.bool_]) -> None:
-        self._log_likelihood = log_likelihood
-        self._periodic = periodic
+    log_likelihood: Callable[[Array], Array]
+    periodic: NDArray[np.bool_]
 
     def map(self, function: Callable[[Any], Any], arguments: Sequence[Any]) -> list[Any]:
         """Apply function to every argument, walks of LockstepWalk in lockstep."""
@@ -59,25 +64,24 @@ class LockstepPool:
         counts = np.zeros((2, len(place)), int)  # accepted and rejected steps within the ellipsoids
         for _ in range(first.kwargs["walks"]):
             jump = rng.random(len(place)) < _JUMP_SHARE
-            step = np.where(jump[:, None], _difference(first.kwargs["live"], len(place), rng),
-                            _ball(axes, rng))
-            proposal, proposed = self._propose(place + step)
+            far = _difference(first.kwargs["live"], len(place), rng)
+            proposal, proposed = self._propose(place + np.where(jump[:, None], far, _ball(axes, rng)))
             accepted = proposed > first.loglstar
             place[accepted], value[accepted] = proposal[accepted], proposed[accepted]
             counts += np.stack([accepted & ~jump, ~accepted & ~jump])
         still = np.isnan(value)
         if still.any():
-            value[still] = self._log_likelihood(place[still])
+            value[still] = self.log_likelihood(place[still])
         return [_answer(argument, u, v, a, r)
                 for argument, u, v, a, r in zip(arguments, place, value, *counts, strict=True)]
 
     def _propose(self, u: Array) -> tuple[Array, Array]:
         """Wrap what is periodic and evaluate what lies in the cube."""
-        u = np.where(self._periodic, u % 1.0, u)
+        u = np.where(self.periodic, u % 1.0, u)
         inside = np.all((u > 0.0) & (u < 1.0), axis=1)
         value = np.full(len(u), -np.inf)
         if inside.any():
-            value[inside] = self._log_likelihood(u[inside])
+            value[inside] = self.log_likelihood(u[inside])
         return u, value
 
 
@@ -100,8 +104,8 @@ def _difference(live: Array, count: int, rng: np.random.Generator) -> Array:
 
 
 def _answer(argument: SamplerArgument, u: Array, value: float, accepted: int, rejected: int) -> SamplerReturn:
-    """Report one walk in the form dynesty expects."""
-    counts = {"accept": int(accepted), "reject": int(rejected)}
+    """Report one walk in the form dynesty expects; at least one step counts as rejected, for its tuning."""
+    counts = {"accept": int(accepted), "reject": max(int(rejected), 1)}
     return SamplerReturn(
         u=u, v=argument.prior_transform(u), logl=LoglOutput(float(value), False),
         ncalls=argument.kwargs["walks"], evaluation_history=[],

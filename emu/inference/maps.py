@@ -6,11 +6,11 @@ quadratic of the wider ones plus Student noise. Its density is closed and its dr
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.special import gammaln, logsumexp
+from scipy.special import gammaln, logsumexp, stdtrit
 
 from emu.families.density import Array
 
@@ -40,11 +40,15 @@ class QuadraticMap:
 
     def sample(self, n: int, rng: np.random.RandomState) -> Array:
         """Draw y (n, P)."""
-        noise: Array = rng.standard_t(_FREEDOM, size=(n, len(self.scale))) * self.scale
-        x: Array = np.zeros(noise.shape)
-        for axis, coefficient in enumerate(self.coefficients):
-            x[:, axis] = _features(x[:, :axis]) @ coefficient + noise[:, axis]
-        return self.centre + x @ self.axes
+        return self._at(rng.standard_t(_FREEDOM, size=(n, len(self.scale))))
+
+    def quantile(self, u: Array) -> Array:
+        """Map the unit cube (N, P), faces left out, to y (N, P): uniform u give draws."""
+        return self._at(stdtrit(_FREEDOM, u))
+
+    def widened(self, factor: float) -> QuadraticMap:
+        """Return the map with its noise a number of times as wide."""
+        return replace(self, scale=factor * self.scale)
 
     def log_prob(self, y: Array) -> Array:
         """Return the log density of y (N, P): (N,)."""
@@ -53,6 +57,13 @@ class QuadraticMap:
         means = [_features(x[:, :axis]) @ c for axis, c in enumerate(self.coefficients)]
         noise = (x - np.stack(means, axis=1)) / self.scale
         return np.asarray(np.sum(_log_student(noise) - np.log(self.scale), axis=1) - log_volume, float)
+
+    def _at(self, noise: Array) -> Array:
+        """Map Student noise of unit scale (N, P) to y."""
+        x: Array = np.zeros(noise.shape)
+        for axis, coefficient in enumerate(self.coefficients):
+            x[:, axis] = _features(x[:, :axis]) @ coefficient + self.scale[axis] * noise[:, axis]
+        return self.centre + x @ self.axes
 
 
 @dataclass(frozen=True)

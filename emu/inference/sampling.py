@@ -10,7 +10,7 @@ from dataclasses import dataclass, replace
 
 from emu.inference.draws import Draws
 from emu.inference.ensembles import Ensembles, ensembles
-from emu.inference.nested import nested
+from emu.inference.nested import nested, nested_about
 from emu.observe.rows import Rows
 from emu.problem import Problem
 
@@ -39,21 +39,24 @@ class ExactAnswer:
 
 def sample_exactly(problem: Problem, rows: Rows, *, live: int = 400, steps: int = 4000, seed: int,
                    progress: Callable[[str], None] | None = None) -> ExactAnswer:
-    """Sample the posterior of a flare: nested first, then four ensembles from its draws.
+    """Sample the posterior of a flare: nested twice, from the prior and about what that found, then ensembles.
 
     It takes minutes for a flare of a family of fourteen parameters.
 
     Args:
         problem: what may have happened and what was measured.
         rows: the flare.
-        live: live points of the nested run.
+        live: live points of the second nested run; the first has half as many.
         steps: of each ensemble at most.
         seed: of all randomness.
         progress: called now and then with a line of text.
     """
-    first = nested(problem, rows, live=live, seed=seed, progress=progress)
-    chains = ensembles(problem, rows, start=first, steps=steps, seed=seed, progress=progress)
-    draws = replace(chains.draws(), log_evidence=first.log_evidence,
-                    log_evidence_error=first.log_evidence_error, calls=first.calls + chains.calls,
-                    seconds=first.seconds + chains.seconds, method="nested, then ensembles")
-    return ExactAnswer(draws, first, chains)
+    scout = nested(problem, rows, live=live // 2, walks=30, seed=seed, progress=progress)
+    second = nested_about(problem, rows, scout, live=live, seed=seed, progress=progress)
+    chains = ensembles(problem, rows, start=second, steps=steps, seed=seed, progress=progress)
+    draws = replace(
+        chains.draws(), log_evidence=second.log_evidence, log_evidence_error=second.log_evidence_error,
+        calls=scout.calls + second.calls + chains.calls,
+        seconds=scout.seconds + second.seconds + chains.seconds, method="nested, then ensembles",
+    )  # fmt: skip
+    return ExactAnswer(draws, second, chains)

@@ -18,7 +18,7 @@ __all__ = ["Block", "log_target", "walk"]
 # Shares of the moves. Independent proposals from fitted maps move between modes and along curved ridges;
 # differences of walkers do the fine work where the maps are poor.
 # emcee's snooker move is not used: its projection is not on a unit vector, so its balance is in doubt.
-_MAP, _DIFFERENCE, _JUMP, _STRETCH = 0.4, 0.35, 0.1, 0.15
+_MAP, _DIFFERENCE, _JUMP, _STRETCH = 0.6, 0.2, 0.05, 0.15
 
 
 @dataclass(frozen=True)

@@ -5,6 +5,7 @@ from __future__ import annotations
 import json
 from collections.abc import Callable
 from dataclasses import dataclass, replace
+from functools import partial
 from pathlib import Path
 
 import numpy as np
@@ -14,7 +15,7 @@ from safetensors.numpy import load, save
 from emu.inference.counted import CountedPosterior
 from emu.inference.draws import Draws, combined, distinct
 from emu.inference.ensembles import EnsemblePlan, Ensembles, gather, plan_ensembles
-from emu.inference.nested import nested
+from emu.inference.nested import nested, nested_about
 from emu.inference.walkers import Block
 from emu.problem import Problem
 from training.checks.held_out import HeldOut
@@ -30,37 +31,41 @@ class ReferencePlan:
     """Fix how hard every flare is worked on.
 
     Args:
-        live: live points of each nested run.
-        least_runs: independent nested runs in any case.
-        most_runs: further ones are added up to here while the error of ln Z is too large.
-        evidence_error: allowed error of ln Z.
+        scouts: independent nested runs from the prior, which find the modes.
+        scout_live: live points of each.
+        scout_walks: steps to a new point in them.
+        live: live points of the nested run about the draws of all scouts.
+        walks: steps to a new point in it.
+        evidence_error: largest error of its ln Z that counts as exact.
         ensembles: independent ensembles.
         walkers: in each.
         most_steps: of each, where they do not agree earlier.
     """
 
-    live: int = 450
-    least_runs: int = 2
-    most_runs: int = 4
+    scouts: int = 2
+    scout_live: int = 150
+    scout_walks: int = 30
+    live: int = 750
+    walks: int = 50
     evidence_error: float = 0.2
     ensembles: int = 4
-    walkers: int = 64
+    walkers: int = 40
     most_steps: int = 8000
 
 
 @dataclass(frozen=True)
 class FlareRuns:
-    """Hold all runs on one flare: nested runs one by one and together, and the ensembles.
+    """Hold all runs on one flare.
 
     Args:
-        singles: independent nested runs.
-        nested: joined.
+        scouts: independent nested runs from the prior.
+        nested: the nested run about their draws.
         ensembles: chains without burn-in.
         steps: that each ensemble made.
         plan: coordinates and proposals of the ensembles.
     """
 
-    singles: tuple[Draws, ...]
+    scouts: tuple[Draws, ...]
     nested: Draws
     ensembles: Ensembles
     steps: int
@@ -80,14 +85,24 @@ def run_flare(problem: Problem, flare: HeldOut, plan: ReferencePlan, work: Path,
         seed: of the flare's samplers.
         progress: called with lines of text.
     """
-    singles: list[Draws] = []
-    while len(singles) < plan.least_runs or (len(singles) < plan.most_runs and
-                                             combined(tuple(singles)).log_evidence_error >
-                                             plan.evidence_error):
-        singles.append(_nested_part(problem, flare, plan, work, (seed, len(singles)), progress))
-    joined = combined(tuple(singles))
+    numbers = [int(n) for n in np.random.SeedSequence([seed, 1]).generate_state(plan.scouts + 1)]
+    scouts = tuple(
+        _nested_part(work / f"scout-{place}.safetensors", progress, partial(
+            nested, problem, flare.rows, live=plan.scout_live, walks=plan.scout_walks, seed=number,
+            progress=progress))
+        for place, number in enumerate(numbers[:-1]))
+    found = _nested_part(work / "nested.safetensors", progress, partial(
+        nested_about, problem, flare.rows, combined(scouts), live=plan.live, walks=plan.walks,
+        seed=numbers[-1], progress=progress))
+    chains, steps, ensemble_plan = _ensembles(problem, flare, found, plan, work, seed, progress)
+    return FlareRuns(scouts, found, chains, steps, ensemble_plan)
+
+
+def _ensembles(problem: Problem, flare: HeldOut, start: Draws, plan: ReferencePlan, work: Path, seed: int,
+               progress: Progress) -> tuple[Ensembles, int, EnsemblePlan]:
+    """Run ensembles block by block until they agree; also return their steps and their plan."""
     posterior = CountedPosterior(problem, flare.rows)
-    chains = plan_ensembles(posterior, joined, count=plan.ensembles, walkers=plan.walkers, seed=seed)
+    chains = plan_ensembles(posterior, start, count=plan.ensembles, walkers=plan.walkers, seed=seed)
     chains = _with_truth(chains, flare)
     blocks: list[list[Block]] = [[] for _ in range(plan.ensembles)]
     found, steps = None, 0
@@ -99,7 +114,7 @@ def run_flare(problem: Problem, flare: HeldOut, plan: ReferencePlan, work: Path,
         progress(f"ensembles: {steps} steps, R-hat {found.rhat.max():.4f}, "
                  f"length {found.length.min():.0f}, accepted {found.acceptance.mean():.2f}, "
                  f"{found.seconds:.0f} s")
-    return FlareRuns(tuple(singles), joined, found, steps, chains)
+    return found, steps, chains
 
 
 def draws_to_keep(runs: FlareRuns, most: int, seed: int) -> tuple[np.ndarray, np.ndarray]:
@@ -123,20 +138,17 @@ def _with_truth(plan: EnsemblePlan, flare: HeldOut) -> EnsemblePlan:
     return replace(plan, start=start)
 
 
-def _nested_part(problem: Problem, flare: HeldOut, plan: ReferencePlan, work: Path,
-                 seed: tuple[int, int], progress: Progress) -> Draws:
+def _nested_part(place: Path, progress: Progress, run: Callable[[], Draws]) -> Draws:
     """Make or read one nested run."""
-    place = work / f"nested-{seed[1]}.safetensors"
     if place.is_file():
         arrays, facts = load(place.read_bytes()), _facts(place)
         return Draws(arrays["theta"], arrays["log_weight"], **facts)
-    number = int(np.random.SeedSequence([*seed, 1]).generate_state(1)[0])
-    run = nested(problem, flare.rows, live=plan.live, seed=number, progress=progress)
-    progress(f"nested run {seed[1]}: ln Z {run.log_evidence:.2f} +- {run.log_evidence_error:.2f}, "
-             f"{run.calls} likelihoods, {run.seconds:.0f} s")
-    facts = {name: value for name, value in vars(run).items() if name not in ("theta", "log_weight")}
-    _write(place, {"theta": run.theta, "log_weight": run.log_weight}, facts)
-    return run
+    found = run()
+    progress(f"{place.stem}: ln Z {found.log_evidence:.2f} +- {found.log_evidence_error:.2f}, "
+             f"{found.calls} likelihoods, {found.seconds:.0f} s")
+    facts = {name: value for name, value in vars(found).items() if name not in ("theta", "log_weight")}
+    _write(place, {"theta": found.theta, "log_weight": found.log_weight}, facts)
+    return found
 
 
 def _block_part(posterior: CountedPosterior, plan: EnsemblePlan, number: int, own: list[Block],

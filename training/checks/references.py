@@ -26,6 +26,7 @@ from emu.inference.counted import CountedPosterior
 from emu.inference.ensembles import LENGTH_LIMIT, RHAT_LIMIT
 from emu.inference.walkers import log_target
 from emu.problem import Problem, problem
+from training.checks.efficiency import importance_efficiency
 from training.checks.held_out import HeldOut, held_out
 from training.checks.reference_parts import FlareRuns, ReferencePlan, draws_to_keep, run_flare
 from training.checks.reference_store import Reference, read_reference, read_references, write_reference
@@ -36,6 +37,7 @@ __all__ = ["make", "make_references"]
 
 AGREEMENT = 0.55  # the largest C2ST between nested runs and ensembles that counts as exact
 _KEPT = 4000
+_WEIGHTED = 4000
 
 
 def make(family: str, campaign: str, out: str | Path, want: int = 4, seed: int = 1, workers: int = 1,
@@ -111,12 +113,15 @@ def _judge(what: Problem, name: str, flare: HeldOut, runs: FlareRuns, seed: int,
         "family": what.name, "campaign": what.campaign.name, "parameters": list(what.prior.names),
         "status": "unresolved" if reasons else "exact", "reasons": reasons,
         "log_evidence": runs.nested.log_evidence, "log_evidence_error": runs.nested.log_evidence_error,
-        "log_evidence_of_runs": [[run.log_evidence, run.log_evidence_error] for run in runs.singles],
+        "log_evidence_of_scouts": [[run.log_evidence, run.log_evidence_error] for run in runs.scouts],
+        "log_evidence_of_weights": _weighted_evidence(what, flare, runs, seed),
         "c2st": test.accuracy, "c2st_floor": test.floor, "c2st_draws": test.draws,
         "rhat": float(chains.rhat.max()), "length": float(chains.length.min()), "steps": runs.steps,
         "acceptance": float(chains.acceptance.mean()), "redrawn_truths": flare.redrawn, "seed": seed,
-        "likelihoods": {"nested": runs.nested.calls, "ensembles": chains.calls},
-        "core_seconds": {"nested": runs.nested.seconds, "ensembles": chains.seconds},
+        "likelihoods": {"scouts": sum(run.calls for run in runs.scouts), "nested": runs.nested.calls,
+                        "ensembles": chains.calls},
+        "core_seconds": {"scouts": sum(run.seconds for run in runs.scouts), "nested": runs.nested.seconds,
+                         "ensembles": chains.seconds},
         "truth_level": _truth_level(what, flare, runs),
     }
     return Reference(name, flare.truth, flare.rows, nested, ensembles, facts)
@@ -136,6 +141,14 @@ def _reasons(runs: FlareRuns, accuracy: float, draws: int, plan: ReferencePlan) 
     if draws < 1000:
         found.append(f"only {draws} distinct draws to compare")
     return found
+
+
+def _weighted_evidence(what: Problem, flare: HeldOut, runs: FlareRuns, seed: int) -> dict[str, float]:
+    """Estimate ln Z a third way: importance weights of the proposals that the ensembles used."""
+    y = runs.plan.maps.sample(_WEIGHTED, np.random.RandomState(seed))
+    value = log_target(CountedPosterior(what, flare.rows), runs.plan.coordinates, y)
+    found = importance_efficiency(value - runs.plan.maps.log_prob(y))
+    return {"log_evidence": found.log_evidence, "efficiency": found.full, "draws": _WEIGHTED}
 
 
 def _truth_level(what: Problem, flare: HeldOut, runs: FlareRuns) -> float:
