@@ -61,7 +61,8 @@ def _points(values: Values, spot_points: int | None) -> tuple[Array, Array]:
     """Return the offsets (P, 3) of a spot's points from its centre, which comes first, and their weights (P,)."""
     if "spot_size" not in values:
         return np.zeros((1, 3)), np.ones(1)
-    side = default_side(float(np.max(values["spot_size"]))) if spot_points is None else max(1, round(spot_points ** (1.0 / 3.0)))
+    by_size = default_side(float(np.max(values["spot_size"])))
+    side = by_size if spot_points is None else max(1, round(spot_points ** (1.0 / 3.0)))
     return cloud_points(side + 1 - side % 2)
 
 

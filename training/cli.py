@@ -155,6 +155,47 @@ def table(
     table(out, plan, listed(families), workers, report=lambda line: typer.echo(line.family, err=True))
 
 
+raymap = command_line("emu-train raymap", "Make and check the learned ray map.")
+app.add_typer(raymap, name="raymap")
+Labels = Annotated[Path, typer.Option(help="File of the exact rays.")]
+
+
+@raymap.command("simulate")
+def raymap_simulate(labels: Labels, seed: Seed = 0) -> None:
+    """Solve for the exact rays that the learned map is fitted to; about a CPU-minute."""
+    from training.raymap.simulate import simulate
+
+    simulate(labels, seed)
+
+
+@raymap.command("fit")
+def raymap_fit(
+    labels: Labels,
+    out: Annotated[Path, typer.Option(help="Folder for learned.safetensors and learned.json.")],
+    seed: Seed = 0,
+) -> None:
+    """Fit the learned map in seconds; the exact rays are made first where they are missing."""
+    from training.raymap.fit import fit
+
+    fit(labels, out, seed)
+
+
+@raymap.command("check")
+def raymap_check(
+    charts: Annotated[Path | None, typer.Option(help="Folder of a fit, instead of the shipped map.")] = None,
+    out: Annotated[Path | None, typer.Option(help="JSON file for the report.")] = None,
+    rays: Annotated[int, typer.Option(min=1000, help="Random points of each domain.")] = 100_000,
+    flares: Annotated[int, typer.Option(min=100, help="Flares of each family.")] = 2000,
+    seed: Annotated[int, typer.Option(help="Of the points; take another for other points.")] = 20_000,
+) -> None:
+    """Measure accuracy and speed against the exact solve; exit code 1 where a target is missed."""
+    from training.raymap.check import check
+
+    report = check(charts, out, rays, flares, seed)
+    typer.echo(report.text)
+    finish(0 if report.passed else 1)
+
+
 def _tell(outcome: "Outcome") -> None:
     """Print where a fit stands."""
     step, loss = outcome.history[-1]

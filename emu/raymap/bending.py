@@ -13,7 +13,6 @@ from __future__ import annotations
 
 import math
 
-import numpy as np
 from numba import njit
 
 from emu.raymap.base import Array
@@ -28,7 +27,7 @@ OUTPUTS = 7
 _FAST = {"contract", "arcp", "reassoc", "nsz"}
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def into_bending(
     spin: Array, cos_i: Array, sin_i: Array, root_u: Array, n: Array, side: float, drag: Array, rows: Array
 ) -> None:
@@ -61,7 +60,7 @@ def into_bending(
         rows[11, k], rows[12, k], rows[13, k] = 0.5 * a * az / half_c, 0.5 * a * bz / half_s, a * nz
 
 
-@njit(cache=True, fastmath=_FAST)
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
 def from_bending(spin: Array, cos_i: Array, sin_i: Array, r: Array, rows: Array, learned: Array, out: Array) -> None:
     """Turn learned functions back into what a ray bundle holds.
 
@@ -92,5 +91,6 @@ def from_bending(spin: Array, cos_i: Array, sin_i: Array, r: Array, rows: Array,
         around, polar = (dy * c - dx * s) * length, ((dx * c + dy * s) * z - rho * dz) * length
         lapse, omega, root_rr, root_tt, varpi, _delta = frame_at(a, radius, z)
         energy = 1.0 / (lapse + omega * varpi * rho * around)
-        out[3, k], out[4, k], out[5, k] = energy * root_rr * d_r * length, energy * root_tt * polar, energy * varpi * around
+        out[3, k] = energy * root_rr * d_r * length
+        out[4, k], out[5, k] = energy * root_tt * polar, energy * varpi * around
         out[6, k] = learned[4, k] * abs(behind)

@@ -49,7 +49,9 @@ class LearnedRays:
         # Mino time of a ray without spin
         tau = swept / np.maximum(np.hypot(columns[0], columns[1]), _LEAST_IMPACT)
         begin = np.stack((columns[0], columns[1], tau), axis=-1)
-        bundle = LearnedBundle(*columns[:7], np.zeros(len(r), dtype=bool), swept, begin, ~trusted)
+        alpha, beta, delay, p_r, p_theta, p_phi, mu, _ = columns
+        none = np.zeros(len(r), dtype=bool)
+        bundle = LearnedBundle(alpha, beta, delay, p_r, p_theta, p_phi, mu, none, swept, begin, ~trusted)
         if not np.all(trusted):
             (index,) = np.nonzero(bundle.exact)
             near = begin[index]
@@ -99,4 +101,4 @@ class LearnedRays:
         """Tell which rays are within the table, be they close to the caustic, so that they may start from it."""
         least, most, fastest, furthest = self.charts()[order].trust[:4]
         root_u = r**-0.5
-        return (root_u >= least) & (root_u <= most) & (np.abs(spin) <= fastest) & (x <= furthest)
+        return np.asarray((root_u >= least) & (root_u <= most) & (np.abs(spin) <= fastest) & (x <= furthest))

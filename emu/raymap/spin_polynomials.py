@@ -10,8 +10,6 @@ import numpy as np
 from numba import njit
 from numpy.typing import NDArray
 
-from emu.raymap.base import Array
-
 __all__ = ["LANES", "exponents", "fill_monomials", "padded", "recipe"]
 
 #: float32 numbers in a vector register; lists of monomials are padded to a multiple.
@@ -56,8 +54,8 @@ def recipe(degree: int) -> tuple[NDArray[np.int64], NDArray[np.int64]]:
     return np.array(rows, dtype=np.int64).reshape(-1, 3), counts
 
 
-@njit(cache=True, fastmath=_FAST)
-def fill_monomials(components: Array, rows: NDArray[np.int64], work: NDArray[np.float32]) -> None:
+@njit(cache=True, fastmath=_FAST, error_model="numpy")
+def fill_monomials(components: NDArray[np.float32], rows: NDArray[np.int64], work: NDArray[np.float32]) -> None:
     """Work out the monomials of a block of rays.
 
     Args:

@@ -13,9 +13,9 @@ from numpy.typing import NDArray
 from safetensors.numpy import load_file, save
 from scipy.interpolate import CubicSpline
 
-from emu.errors import UserError
 from emu.raymap.spin_polynomials import exponents, padded
 from training.raymap.design import DIRECT, INDIRECT, TRUST, Trust, Zone
+from training.raymap.simulate import simulate
 
 __all__ = ["fit", "fit_zone", "spline_matrix"]
 
@@ -107,20 +107,19 @@ def fit_zone(zone: Zone, spins: Array, labels: Array, good: Flags) -> Array:
     return table[:, ghosts:]
 
 
-def fit(labels: Path, out: Path) -> None:
+def fit(labels: Path, out: Path, seed: int = 0, direct: tuple[Zone, ...] = DIRECT) -> None:
     """Fit the charts of both image orders and write them with their manifest.
 
     Args:
-        labels: written by `simulate`. out: folder for learned.safetensors and learned.json.
-
-    Raises:
-        UserError: there are no labels.
+        labels: written by `simulate`; made with the seed where it is missing.
+        out: folder for learned.safetensors and learned.json.
+        direct: zones of order 0, with the nodes of the labels but perhaps other degrees.
     """
     if not labels.is_file():
-        raise UserError(f"{labels}: no such file; make it with `emu-train raymap simulate`")
+        simulate(labels, seed)
     given = load_file(labels)
     tensors: dict[str, NDArray[Any]] = {}
-    for order, zones in enumerate((DIRECT, INDIRECT)):
+    for order, zones in enumerate((direct, INDIRECT)):
         tables = []
         for z, zone in enumerate(zones):
             spins, known, good = (given[f"order{order}.zone{z}.{name}"] for name in ("spins", "labels", "good"))
@@ -135,8 +134,8 @@ def fit(labels: Path, out: Path) -> None:
         "what": "learned ray map, image orders 0 and 1",
         "sha256": hashlib.sha256(content).hexdigest(),
         "bytes": len(content),
-        "made_by": "emu-train raymap simulate, emu-train raymap fit",
-        "zones": [[asdict(zone) for zone in zones] for zones in (DIRECT, INDIRECT)],
+        "made_by": "emu-train raymap fit",
+        "zones": [[asdict(zone) for zone in zones] for zones in (direct, INDIRECT)],
         "trust": [asdict(trust) for trust in TRUST],
     }
     (out / "learned.json").write_text(json.dumps(manifest, indent=1) + "\n")

@@ -14,7 +14,7 @@ from emu.raymap.base import Array, Flags
 from emu.raymap.exact import ExactRays
 from emu.raymap.learned import LearnedBundle, LearnedRays
 
-__all__ = ["FAMILIES", "CountedRays", "FlareErrors", "compare_flares"]
+__all__ = ["CountedRays", "FlareErrors", "compare_flares"]
 
 #: One of every path; the field and its changes are no matter of the rays.
 FAMILIES = ("midplane-frozen", "helix-frozen", "drift-frozen")
@@ -51,11 +51,13 @@ class FlareErrors:
     """Hold the largest error of every flare and the rays that were counted.
 
     Args:
-        fraction: (N,) of q and u. flux: (N,) relative. rays, exact: numbers of rays of the learned map.
+        fraction: (N,) of q and u. flux: (N,) relative. failures: (N,) rays that either map did not find.
+        rays, exact: numbers of rays of the learned map.
     """
 
     fraction: NDArray[np.float64]
     flux: NDArray[np.float64]
+    failures: NDArray[np.int64]
     rays: int
     exact: int
 
@@ -71,4 +73,5 @@ def compare_flares(name: str, count: int, seed: int) -> FlareErrors:
     exact = assemble(model.source, values, times, ExactRays())
     gaps = [np.max(np.abs(learned[kind] - exact[kind]), axis=1) for kind in ("q", "u")]
     relative = np.abs(learned["flux"] - exact["flux"]) / np.maximum(exact["flux"], 1e-300)
-    return FlareErrors(np.maximum(*gaps), np.max(relative, axis=1), counted.total, counted.exact)
+    failures = learned["failures"] + exact["failures"]
+    return FlareErrors(np.maximum(*gaps), np.max(relative, axis=1), failures, counted.total, counted.exact)
