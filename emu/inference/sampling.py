@@ -14,7 +14,7 @@ from emu.inference.nested import nested, nested_about
 from emu.observe.rows import Rows
 from emu.problem import Problem
 
-__all__ = ["Draws", "ExactAnswer", "ensembles", "nested", "sample_exactly"]
+__all__ = ["ExactAnswer", "ensembles", "nested", "nested_about", "sample_exactly"]
 
 
 @dataclass(frozen=True)

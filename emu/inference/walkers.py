@@ -41,12 +41,13 @@ class Block:
 
 
 def log_target(posterior: CountedPosterior, coordinates: SamplingCoordinates, y: Array) -> Array:
-    """Return the unnormalised log posterior density per unit of straight coordinates y (N, P): (N,)."""
+    """Return log likelihood plus log prior density per unit of straight coordinates y (N, P): (N,)."""
     theta, log_prior = coordinates.from_straight(y)
     value = np.full(len(y), -np.inf)
     inside = np.isfinite(log_prior)
     if inside.any():
-        value[inside] = log_prior[inside] + posterior.log_likelihood(theta[inside])
+        cut = np.log(posterior.prior.accepted_fraction)  # the box density, spread over valid parameters alone
+        value[inside] = log_prior[inside] - cut + posterior.log_likelihood(theta[inside])
     return value
 
 
