@@ -24,6 +24,8 @@ __all__ = ["OUTPUTS", "ROWS", "from_bending", "into_bending"]
 ROWS = 14
 #: Learned functions: five that are even under reflection in the plane, then two that are odd.
 OUTPUTS = 7
+_ASIDE = 1e-9  # puts a source exactly before the hole a little aside, where it has a bending plane
+_LEAST = 1e-18
 _FAST = {"contract", "arcp", "reassoc", "nsz"}
 
 
@@ -47,10 +49,10 @@ def into_bending(
         tangent = 0.25 * a * s * s * shift * (1.0 - (ox * x + oz * z))
         scale = 1.0 / (1.0 + tangent * tangent)
         c, d = (1.0 - tangent * tangent) * scale, 2.0 * tangent * scale
-        x, y = x * c - y * d, x * d + y * c
+        x, y = x * c - y * d, x * d + y * c + _ASIDE
         ax, az, bx, bz = ox + x, oz + z, x - ox, z - oz
-        half_c = side * (0.5 * math.sqrt(ax * ax + y * y + az * az) + 1e-14)
-        half_s = 0.5 * math.sqrt(bx * bx + y * y + bz * bz) + 1e-14
+        half_c = side * (0.5 * math.sqrt(ax * ax + y * y + az * az) + _LEAST)
+        half_s = 0.5 * math.sqrt(bx * bx + y * y + bz * bz) + _LEAST
         inverse = 0.5 / (half_c * half_s)
         nx, ny, nz = -oz * y * inverse, (oz * x - ox * z) * inverse, ox * y * inverse
         rows[0, k], rows[1, k] = half_c, half_s
