@@ -15,6 +15,7 @@ ROOT = Path(__file__).resolve().parent.parent
 LAYERS = {
     "errors": 0,
     "configs": 1,
+    "processes": 1,
     "units": 2,
     "spacetime": 3,
     "raymap": 4,

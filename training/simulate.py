@@ -18,8 +18,8 @@ from emu.families.installed import model
 from emu.families.model import Model
 from emu.observe.campaign import campaign as read_campaign
 from emu.problem import Problem
+from emu.processes import in_processes
 from training.nodes import Refined, refine
-from training.processes import in_processes
 from training.store import Layout, create, missing_chunks, write_chunk
 
 __all__ = ["STANDARD", "layout_of", "model_text", "simulate", "simulate_problem"]

@@ -9,8 +9,8 @@ from pathlib import Path
 from typing import Any
 
 from emu.families.catalogue import family_names
+from emu.processes import in_processes
 from training.files import digest, write_atomically
-from training.processes import in_processes
 
 __all__ = ["Line", "Plan", "table"]
 

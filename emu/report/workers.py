@@ -2,22 +2,17 @@
 
 from __future__ import annotations
 
-import multiprocessing
-import os
-import threading
 from collections.abc import Callable, Iterator, Sequence
 from concurrent.futures import ProcessPoolExecutor, as_completed
 from contextlib import contextmanager
-from multiprocessing.connection import wait
 from typing import TypeVar
+
+from emu.processes import one_core_processes
 
 __all__ = ["Pool", "opened_pool"]
 
 Job = TypeVar("Job")
 Result = TypeVar("Result")
-
-# Each process computes on one core: threads of several processes would only wait for each other.
-_ONE_THREAD = ("OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS", "NUMBA_NUM_THREADS")
 
 
 class Pool:
@@ -47,9 +42,7 @@ class Pool:
 
 @contextmanager
 def opened_pool(workers: int) -> Iterator[Pool]:
-    """Start worker processes, and stop them however the work ends.
-
-    They are spawned, not forked: a fork of a process that has used threads may hang.
+    """Give a pool whose processes end with the block.
 
     Args:
         workers: number of processes; 1 means to work in this one.
@@ -57,29 +50,5 @@ def opened_pool(workers: int) -> Iterator[Pool]:
     if workers <= 1:
         yield Pool(None)
         return
-    before = {name: os.environ.get(name) for name in _ONE_THREAD}
-    os.environ.update(dict.fromkeys(_ONE_THREAD, "1"))
-    context = multiprocessing.get_context("spawn")
-    executor = ProcessPoolExecutor(workers, mp_context=context, initializer=_follow_parent)
-    try:
+    with one_core_processes(workers) as executor:
         yield Pool(executor)
-    finally:
-        executor.shutdown(wait=True, cancel_futures=True)
-        for name, value in before.items():
-            if value is None:
-                os.environ.pop(name, None)
-            else:
-                os.environ[name] = value
-
-
-def _follow_parent() -> None:
-    """End this process when the one that started it has gone, even by a kill that nobody can catch."""
-    parent = multiprocessing.parent_process()
-    if parent is None:
-        return
-
-    def watch() -> None:
-        wait([parent.sentinel])
-        os._exit(1)
-
-    threading.Thread(target=watch, daemon=True).start()
