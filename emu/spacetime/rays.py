@@ -90,7 +90,8 @@ def _follow(rays: Array, before: Array, places: tuple[Array, ...], order: int) -
     """
     last = rays[:, :3].copy()
     rays[:, :3] += last - before
-    good = solve_newton(*places, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
+    spin, cos_i, sin_i, r, n = places
+    good = solve_newton(spin, cos_i, sin_i, r, n, rays, _NEWTON_STEPS) & _is_image(rays, order, _SWEPT_SLACK)
     rays[~good, :3] = last[~good]
     return last, good
 
