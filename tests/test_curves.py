@@ -103,13 +103,15 @@ def test_far_emitters_feel_no_bending():
 @pytest.mark.parametrize(("spin", "redshift"), [(0.0, 0.707106781), (0.9, 0.743444059)])
 def test_face_on_redshift(spin, redshift):
     """Circular orbit at r = 6 seen face on (Luminet 1979; Bardeen, Press & Teukolsky 1972)."""
-    curves = emu.curves("midplane-frozen", {**ORBIT, "spin": spin, "inclination": 0.0, "radius": 6.0, "rate": 1.0}, TIMES)
+    orbit = {**ORBIT, "spin": spin, "inclination": 0.0, "radius": 6.0, "rate": 1.0}
+    curves = emu.curves("midplane-frozen", orbit, TIMES)
     assert curves["redshift"] == pytest.approx(np.full(31, redshift), abs=2e-9)
 
 
 def test_edge_on_redshift_extremes():
     """Tangential photons at r = 6 without spin: sqrt 2 and sqrt(2)/3 (Luminet 1979)."""
-    curves = emu.curves("midplane-frozen", _steady(inclination=90.0, radius=6.0), np.linspace(0, 2 * np.pi * 6**1.5, 4001))
+    period = np.linspace(0, 2 * np.pi * 6**1.5, 4001)
+    curves = emu.curves("midplane-frozen", _steady(inclination=90.0, radius=6.0), period)
     assert curves["redshift"].max() == pytest.approx(np.sqrt(2.0), abs=1e-4)
     assert curves["redshift"].min() == pytest.approx(np.sqrt(2.0) / 3.0, abs=1e-4)
 

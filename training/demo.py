@@ -13,16 +13,16 @@ import time
 from pathlib import Path
 from typing import Annotated
 
-import numpy as np
 import typer
-from astropy.table import Table
+from astropy.table import Row, Table
 
 __all__ = ["run_demo"]
 
 FAMILIES = ("midplane-frozen", "midplane-turning", "midplane-turbulent")
 # family, how many flares, seed
 SEASON = (("midplane-frozen", 5, 101), ("midplane-turning", 3, 102), ("midplane-turbulent", 2, 103))
-SHOWN = ("radius", "inclination", "spin")
+SHOWN = (("radius", " GM/c2"), ("inclination", " deg"), ("spin", ""))
+CASES = 200  # held-out flares of the checks
 FEW_DRAWS = 100  # effective draws below which weights say that the exact posterior is much narrower
 
 
@@ -77,7 +77,7 @@ def _checks(out: Path, bundle: Path, begin: float, log: Path) -> None:
     """Check the estimators on held-out flares and print the verdicts."""
     _title(begin, "Check the estimators on flares they have never seen")
     _run(
-        [["emu-train", "check", str(bundle), "--out", f"{out}/checks", "--cases", "200", "--weighed", "4"]],
+        [["emu-train", "check", str(bundle), "--out", f"{out}/checks", "--cases", str(CASES), "--weighed", "4"]],
         log, (0, 1, 4),
     )  # fmt: skip
     for name in FAMILIES:
@@ -105,28 +105,30 @@ def _interval(summary: Table, flare: str, family: str, parameter: str) -> str:
     return text if row["informed"] == "informed" else f"[{text}]"
 
 
+def _print_flare(flare: str, by_family: dict[str, Row], summary: Table) -> None:
+    """Print one flare: the families' probabilities, three parameters under the likeliest, effective draws."""
+    best = max(by_family, key=lambda name: by_family[name]["probability"])
+    chances = "  ".join(f"{name.split('-')[1]} {by_family[name]['probability']:.2f}" for name in FAMILIES)
+    cells = ", ".join(f"{name} {_interval(summary, flare, best, name)}{unit}" for name, unit in SHOWN)
+    row = by_family[best]
+    print(f"  {flare:32s} {chances}")
+    print(f"      {best}: {cells}; {row['ess']:.0f} of {row['draws']} draws effective")
+
+
 def _print_answers(out: Path) -> None:
-    """Print for each flare the families' probabilities, three parameters and what not to trust."""
+    """Print for each flare what it allows, and then what not to trust."""
     summary, chances = Table.read(out / "answers" / "summary.ecsv"), Table.read(out / "answers" / "families.ecsv")
-    print(f"\n  {'flare (its name tells the truth)':34s}{'frozen':>8s}{'turning':>9s}{'turbul.':>9s}   under the likeliest:"
-          f" {'radius GM/c2':20s}{'inclination deg':20s}{'spin':24s} effective draws")
+    print("\n  Each flare (its name tells the truth), probabilities, and medians with 68 % intervals:")
     for flare in dict.fromkeys(chances["flare"]):
-        mine = chances[chances["flare"] == flare]
-        by_family = {row["family"]: row for row in mine}
-        best = max(by_family, key=lambda name: by_family[name]["probability"])
-        numbers = "".join(f"{by_family[name]['probability']:9.2f}" for name in FAMILIES)
-        cells = "".join(f"{_interval(summary, flare, best, name):22s}" for name in SHOWN)
-        effective = float(by_family[best]["ess"])
-        note = f"{effective:.0f}" + (" of 1000: weigh with care" if effective < FEW_DRAWS else " of 1000")
-        print(f"  {flare:33s}{numbers}   {best:20s} {cells} {note}")
-    low = np.asarray(chances["ess"]) < FEW_DRAWS
+        _print_flare(flare, {row["family"]: row for row in chances if row["flare"] == flare}, summary)
+    low = sum(ess < FEW_DRAWS for ess in chances["ess"])
     print(f"""
   Where not to trust this:
-  - A bracketed interval hardly differs from the prior: the data do not inform it.
-  - {low.sum()} of {len(low)} posteriors (flare and family) have fewer than {FEW_DRAWS} effective draws of 1000: the small
-    networks of this demo are wider than the exact posterior there, by far. `emu infer --finish exact` samples it.
+  - An interval in brackets hardly differs from the prior: the data do not inform it.
+  - {low} of {len(chances)} posteriors (flare and family) have fewer than {FEW_DRAWS} effective draws of 1000: there the
+    exact posterior is much narrower than what these small networks say. `emu infer --finish exact` samples it.
   - The probabilities are a small classifier's, for equal shares of {len(FAMILIES)} families, and hold only among them.
-  - The checks above say what failed; a check that passed on 200 flares is a check on 200 flares.""")
+  - A check that passed on {CASES} flares is a check on {CASES} flares; the lines above say what failed.""")
 
 
 def run_demo(out: Path, flares: int, steps: int) -> None:

@@ -71,7 +71,8 @@ def test_turning_keeps_length_and_ends_at_its_angle():
         "tilt": np.array(0.7), "turn": np.array(1.2), "roll": np.array(2.0), "turn_time": np.array(5.0),
         "turn_duration": np.array(3.0), "dip": np.array(0.4),
     }  # fmt: skip
-    b = np.broadcast_to(background({**values, "pitch": np.array(0.5), "radius": np.array(8.0)}, np.array([8.0])), (3, 3))
+    start = background({**values, "pitch": np.array(0.5), "radius": np.array(8.0)}, np.array([8.0]))
+    b = np.broadcast_to(start, (3, 3))
     turned, strength = Turning().apply(values, np.array([-500.0, 5.0, 500.0]), b)
     assert np.linalg.norm(turned, axis=-1) == pytest.approx(np.ones(3))
     assert np.arccos(np.clip(np.sum(turned * b, axis=-1), -1, 1)) == pytest.approx([0.0, 0.6, 1.2], abs=1e-7)

@@ -25,8 +25,10 @@ class _Blind(ExactRays):
 
 def test_failures_are_counted_and_dark():
     """The curves stay finite, the lost rows are dark, and each is counted."""
-    given = {"spin": 0.3, "inclination": 60.0, "axis_angle": 10.0, "radius": 8.0, "phase": 0.0, "rate": 1.0, "tilt": 20.0,
-             "pitch": 30.0, "index": 0.6, "polarised_share": 0.8, "brightness": 1.0}  # fmt: skip
+    given = {
+        "spin": 0.3, "inclination": 60.0, "axis_angle": 10.0, "radius": 8.0, "phase": 0.0, "rate": 1.0,
+        "tilt": 20.0, "pitch": 30.0, "index": 0.6, "polarised_share": 0.8, "brightness": 1.0,
+    }  # fmt: skip
     values = {name: np.full((1, 1), value) for name, value in given.items()}
     curves = assemble(Source(Midplane(), Frozen(), None, 0), values, np.linspace(-70, 70, 29)[None, :], _Blind())
     dark = curves["flux"][0] == 0.0

@@ -132,7 +132,7 @@ def test_circular_frequency():
 
 
 def test_frame_is_orthonormal():
-    """The zero-angular-momentum tetrad reproduces the Boyer-Lindquist metric as textbooks print it (common practice)."""
+    """The zero-angular-momentum tetrad reproduces the Boyer-Lindquist metric of the textbooks (common practice)."""
     from emu.spacetime.kerr import frame_at
 
     a, r, cos_t = 0.7, 3.3, 0.4
