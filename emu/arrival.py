@@ -23,7 +23,7 @@ _TOLERANCE = 1e-5  # GM/c3
 _MOST_STEPS = 12
 _LEAST_GAP = 0.3  # GM/c2 outside the horizon, closer sources are failures
 _PATH_VALUES = ("spin", "inclination")
-COLUMNS = ("alpha", "beta", "delay", "p_r", "p_theta", "p_phi", "magnification", "swept")
+COLUMNS = ("alpha", "beta", "delay", "p_r", "p_theta", "p_phi", "magnification", "swept", "exact")
 
 
 @dataclass(frozen=True)
@@ -32,7 +32,7 @@ class Arrived:
 
     Args:
         time: (N, T) emission times counted from t0, GM/c3. motion: there, each (N, T).
-        rays: (8, N, T) in the order of COLUMNS. start: (N, T, 3) for near sources.
+        rays: (9, N, T) in the order of COLUMNS. start: (N, T, 3) for near sources.
         failed, tube: (N, T) bool.
     """
 
@@ -171,7 +171,7 @@ def _converge(
         values, offset: of each ray, (M,).
 
     Returns:
-        times (M,), columns (8, M), starts (M, 3), failed (M,).
+        times (M,), columns (9, M), starts (M, 3), failed (M,).
     """
     time, start = guess[0].copy(), guess[1].copy()
     columns, failed = np.zeros((len(COLUMNS), time.size)), np.ones(time.size, bool)

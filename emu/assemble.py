@@ -36,7 +36,7 @@ def _light(source: Source, values: Values, arrived: Arrived) -> tuple[Array, NDA
     motion = arrived.motion
     b, strength = source.field(values, arrived.time, motion.cylinder)
     rates = np.stack((motion.r_rate, motion.theta_rate, motion.phi_rate), axis=-1).reshape(-1, 3)
-    alpha, beta, _delay, p_r, p_theta, p_phi, magnification, _swept = arrived.rays
+    alpha, beta, _delay, p_r, p_theta, p_phi, magnification, _swept, _exact = arrived.rays
     rays = np.stack((alpha, beta, p_r, p_theta, p_phi, magnification), axis=-1).reshape(-1, 6)
     failed = arrived.failed
     out, timelike = shine(
@@ -113,12 +113,13 @@ def assemble(
     Returns:
         (N, T) arrays flux, q, u, east, north (flux-weighted, GM/c2), and of the direct light of the centre
         emission_time, redshift, magnification; (N,) int "failures", rays that could not be solved and add
-        nothing, and "tube", direct and higher rays from within a caustic tube. No NaN.
+        nothing, "tube", rays from within a caustic tube, and "exact", rays that were solved, not learned. No NaN.
     """
     radians = in_radians(values)
     delay_0, lost = reference_delay(source.path, radians, raymap)
     offsets, weights = _points(radians, spot_points)
     failures, tube = lost.astype(np.int64), np.zeros(len(times), dtype=np.int64)
+    exact = np.zeros(len(times), dtype=np.int64)
     sums = np.zeros((5, *times.shape))
     of_centre: dict[str, Array] = {}
     for order in range(orders):
@@ -132,9 +133,10 @@ def assemble(
             sums += np.einsum("p,kpnt->knt", weights[group], total[:5].reshape(shape))
             failures += failed.reshape(shape).sum(axis=(0, 1, 3))
             tube += arrived.tube.reshape(shape).sum(axis=(0, 1, 3))
+            exact += np.count_nonzero((arrived.rays[-1] * ~arrived.failed).reshape(shape), axis=(0, 1, 3))
             if not of_centre:
                 of_centre = {"emission_time": arrived.time, "redshift": total[5], "magnification": total[6]}
     flux = sums[0]
     fractions = np.divide(sums[1:], flux, out=np.zeros_like(sums[1:]), where=flux > 0.0)
     curves = dict(zip(_SUMS, (flux, *fractions), strict=True))
-    return {**curves, **of_centre, "failures": failures, "tube": tube}
+    return {**curves, **of_centre, "failures": failures, "tube": tube, "exact": exact}

@@ -62,13 +62,14 @@ def curves(
         parameters: name -> value; degrees, GM/c2 and GM/c3. `spot_size`, and `peak_time_2`, `rise_time_2`,
             `decay_time_2`, `weight_2` together, may be left out; all others of the family are required.
         times: (T,) arrival times counted from t_ref, GM/c3.
-        raymap: how rays are found: "exact".
+        raymap: how rays are found: "exact" or "learned".
         orders: number of images added, 1 or 2.
         spot_points: number of quadrature points of a spot; by its size when left out.
 
     Returns:
         (T,) arrays flux, q, u, east, north (GM/c2), emission_time (GM/c3), redshift, magnification; the integers
-        "failures" (rays not found, which add nothing) and "tube" (rays from within a caustic tube).
+        "failures" (rays not found, which add nothing) "tube" (rays from
+        within a caustic tube) and "exact" (rays that were solved, not learned).
         With turbulence, q and u are those of the ordered part.
 
     Raises:

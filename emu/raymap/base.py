@@ -26,6 +26,7 @@ class RayBundle:
         failed: True where no ray was found; the other entries are then zero.
         swept: angle swept about the hole, frame dragging apart, rad.
         start: (N, 3) what a neighbouring source may start from.
+        exact: True where the ray was solved, False where it was taken from what was learned.
     """
 
     alpha: Array
@@ -38,6 +39,7 @@ class RayBundle:
     failed: Flags
     swept: Array
     start: Array
+    exact: Flags
 
 
 class RayMap(Protocol):

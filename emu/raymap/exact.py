@@ -33,6 +33,7 @@ class ExactRays:
             failed=rays.failed,
             swept=rays.swept,
             start=np.stack((rays.alpha, rays.beta, rays.tau), axis=-1),
+            exact=np.ones(len(r), dtype=bool),
         )
 
     def in_tube(

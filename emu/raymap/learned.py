@@ -13,21 +13,10 @@ from emu.raymap.chart import Chart, shipped
 from emu.raymap.exact import ExactRays
 from emu.raymap.learned_kernel import evaluate
 
-__all__ = ["LearnedBundle", "LearnedRays"]
+__all__ = ["LearnedRays"]
 
 _LEAST_IMPACT = 1e-12
 _TUBE = 0.3
-
-
-@dataclass(frozen=True)
-class LearnedBundle(RayBundle):
-    """Add to the bundle which rays were solved exactly, because the learned map is not trusted there.
-
-    Args:
-        exact: (N,) bool.
-    """
-
-    exact: Flags
 
 
 @dataclass(frozen=True)
@@ -42,7 +31,7 @@ class LearnedRays:
 
     def trace(
         self, spin: Array, inclination: Array, r: Array, n: Array, order: int, start: Array | None = None
-    ) -> LearnedBundle:
+    ) -> RayBundle:
         """Return the rays of one image order, as `RayMap` says; only exact rays outside the table use a start."""
         columns, trusted = self._learned(spin, inclination, r, n, order)
         swept = 4.0 * np.arctan(columns[7])
@@ -51,7 +40,7 @@ class LearnedRays:
         begin = np.stack((columns[0], columns[1], tau), axis=-1)
         alpha, beta, delay, p_r, p_theta, p_phi, mu, _ = columns
         none = np.zeros(len(r), dtype=bool)
-        bundle = LearnedBundle(alpha, beta, delay, p_r, p_theta, p_phi, mu, none, swept, begin, ~trusted)
+        bundle = RayBundle(alpha, beta, delay, p_r, p_theta, p_phi, mu, none, swept, begin, ~trusted)
         if not np.all(trusted):
             (index,) = np.nonzero(bundle.exact)
             near = begin[index]

@@ -156,6 +156,9 @@ def test_curves_agree_with_the_exact_map(orders):
             assert np.abs(one[name] - other[name]).max() < 1e-3
         assert np.abs(one["flux"] / other["flux"] - 1.0).max() < 3e-3
         assert one["failures"] == 0
+        rays = orders * 25 * (27 if more else 1)
+        assert other["exact"] == rays
+        assert one["exact"] < (1 if orders == 1 else rays)
 
 
 def test_damaged_numbers_are_refused(tmp_path):

@@ -10,9 +10,9 @@ from numpy.typing import NDArray
 from emu.assemble import assemble
 from emu.families.catalogue import family
 from emu.families.prior import Prior
-from emu.raymap.base import Array, Flags
+from emu.raymap.base import Array, Flags, RayBundle
 from emu.raymap.exact import ExactRays
-from emu.raymap.learned import LearnedBundle, LearnedRays
+from emu.raymap.learned import LearnedRays
 
 __all__ = ["CountedRays", "FlareErrors", "compare_flares"]
 
@@ -32,7 +32,7 @@ class CountedRays:
 
     def trace(
         self, spin: Array, inclination: Array, r: Array, n: Array, order: int, start: Array | None = None
-    ) -> LearnedBundle:
+    ) -> RayBundle:
         """Return the learned map's rays, counted."""
         bundle = self.rays.trace(spin, inclination, r, n, order, start)
         self.total += len(r)

@@ -74,7 +74,7 @@ class Network:
         cos_i, sin_i = np.cos(at.inclination), np.sin(at.inclination)
         from_bending(at.spin, cos_i, sin_i, at.r, rays.rows, np.ascontiguousarray(self.learned(rays).T), out)
         none = np.zeros(len(at.r), dtype=bool)
-        return RayBundle(*out, none, np.zeros(len(at.r)), np.zeros((len(at.r), 3)))
+        return RayBundle(*out, none, np.zeros(len(at.r)), np.zeros((len(at.r), 3)), none)
 
 
 def teach(rays: Teaching, width: int, raw: bool, seconds: float, seed: int) -> Network:
