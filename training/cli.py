@@ -155,6 +155,20 @@ def table(
     table(out, plan, listed(families), workers, report=lambda line: typer.echo(line.family, err=True))
 
 
+@app.command()
+def choices(
+    training_set: Annotated[Path, typer.Argument(metavar="SET", help="A complete training set.")],
+    recipes: Annotated[list[str], typer.Argument(metavar="RECIPES...", help="Recipe names, or paths of TOMLs.")],
+    out: Annotated[Path, typer.Option(help="Folder of the table.")],
+    minutes: Annotated[float, typer.Option(help="CPU-minutes of each recipe, as this machine spends them.")] = 2.0,
+    seed: Seed = 0,
+) -> None:
+    """Compare recipes at equal cost: held-out loss against draws a second."""
+    from training.choices import choices
+
+    choices(training_set, recipes, out, minutes=minutes, seed=seed, report=lambda line: typer.echo(line, err=True))
+
+
 raymap = command_line("emu-train raymap", "Make and check the learned ray map.")
 app.add_typer(raymap, name="raymap")
 Labels = Annotated[Path, typer.Option(help="File of the exact rays.")]
