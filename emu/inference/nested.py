@@ -55,7 +55,7 @@ class _Cube:
     log_share: float
 
 
-def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: int = 40, left: float = 0.05,
+def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: int = 40, left: float = 0.1,
            progress: Progress | None = None) -> Draws:
     """Sample the posterior of a flare by nested sampling from the prior.
 
@@ -73,7 +73,7 @@ def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: i
         live: live points; the error of the log evidence falls as their square root.
         seed: of all randomness.
         walks: steps to a new point.
-        left: stop when the live points can raise the log evidence by no more.
+        left: stop when the live points can raise the log evidence by no more; they are then added.
         progress: called now and then with a line of text.
 
     Returns:
@@ -92,7 +92,7 @@ def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: i
 
 
 def nested_about(problem: Problem, rows: Rows, about: Draws, *, live: int = 500, seed: int, walks: int = 60,
-                 left: float = 0.02, progress: Progress | None = None) -> Draws:
+                 left: float = 0.1, progress: Progress | None = None) -> Draws:
     """Sample the posterior of a flare by nested sampling from a wide density about draws of it.
 
     The density q is a quadratic map with heavy tails in straight coordinates, half as wide again as the
@@ -106,7 +106,7 @@ def nested_about(problem: Problem, rows: Rows, about: Draws, *, live: int = 500,
         live: live points.
         seed: of all randomness.
         walks: steps to a new point.
-        left: stop when the live points can raise the log evidence by no more.
+        left: stop when the live points can raise the log evidence by no more; they are then added.
         progress: called now and then with a line of text.
 
     Returns:
