@@ -10,7 +10,7 @@ from scipy.special import logsumexp
 
 from emu.families.density import Array
 
-__all__ = ["Draws", "combined", "distinct", "resampled"]
+__all__ = ["Draws", "distinct", "pooled", "resampled"]
 
 
 @dataclass(frozen=True)
@@ -77,23 +77,23 @@ def resampled(draws: Draws, n: int, rng: np.random.Generator) -> NDArray[np.int6
     return np.asarray(rng.permutation(np.minimum(chosen, len(edges) - 1)), np.int64)
 
 
-def combined(parts: tuple[Draws, ...]) -> Draws:
-    """Join independent runs that each estimated the evidence: every run weighs as its evidence.
+def pooled(runs: tuple[Draws, ...], within: float = 10.0) -> Draws:
+    """Join independent runs with equal shares, so that what only one of them found is not lost.
 
-    The joint evidence is the mean of theirs. Its error is propagated from the errors stated by the runs,
-    so it knows nothing of a mode that a run missed: compare the runs as well.
+    Short runs misjudge their evidence by more than they state, so it must not decide between them. A run
+    whose evidence is lower than the best by a factor of e^within found nothing of weight and is left out.
+
+    Returns:
+        Draws without an evidence: a place to start from, not a posterior.
     """
-    evidence = np.array([part.log_evidence for part in parts])
-    error = np.array([part.log_evidence_error for part in parts])
-    share = np.exp(evidence - logsumexp(evidence))
-    weights = [np.log(part.weight.clip(1e-300)) + np.log(max(s, 1e-300))
-               for part, s in zip(parts, share, strict=True)]
+    best = max(run.log_evidence for run in runs)
+    kept = [run for run in runs if run.log_evidence >= best - within]
     return Draws(
-        theta=np.concatenate([part.theta for part in parts]),
-        log_weight=np.concatenate(weights),
-        log_evidence=float(logsumexp(evidence) - np.log(len(parts))),
-        log_evidence_error=float(np.sqrt(np.sum((share * error) ** 2))),
-        calls=sum(part.calls for part in parts),
-        seconds=sum(part.seconds for part in parts),
-        method=parts[0].method,
+        theta=np.concatenate([run.theta for run in kept]),
+        log_weight=np.concatenate([np.log(run.weight.clip(1e-300)) for run in kept]) - np.log(len(kept)),
+        log_evidence=np.nan,
+        log_evidence_error=np.nan,
+        calls=sum(run.calls for run in runs),
+        seconds=sum(run.seconds for run in runs),
+        method="pooled",
     )

@@ -14,6 +14,7 @@ from dataclasses import dataclass
 
 import numpy as np
 from dynesty import NestedSampler
+from dynesty.results import Results
 from numpy.typing import NDArray
 from scipy.special import ndtri
 
@@ -92,7 +93,7 @@ def nested(problem: Problem, rows: Rows, *, live: int = 500, seed: int, walks: i
 
 
 def nested_about(problem: Problem, rows: Rows, about: Draws, *, live: int = 500, seed: int, walks: int = 60,
-                 left: float = 0.1, progress: Progress | None = None) -> Draws:
+                 left: float = 0.05, progress: Progress | None = None) -> Draws:
     """Sample the posterior of a flare by nested sampling from a wide density about draws of it.
 
     The density q is a quadratic map with heavy tails in straight coordinates, half as wide again as the
@@ -155,9 +156,19 @@ def _sample(cube: _Cube, posterior: CountedPosterior, seed: int, walks: int, lef
     found = sampler.results
     return Draws(
         theta=np.asarray(found.samples, float), log_weight=np.asarray(found.logwt - found.logz[-1], float),
-        log_evidence=float(found.logz[-1] + cube.log_share), log_evidence_error=float(found.logzerr[-1]),
+        log_evidence=float(found.logz[-1] + cube.log_share), log_evidence_error=_error(found, live),
         calls=posterior.calls, seconds=time.process_time() - began, method="nested",
     )
+
+
+def _error(found: Results, live: int) -> float:
+    """Return the error of ln Z: dynesty's, but never below sqrt(H / live) (Skilling 2006).
+
+    Where little volume had to be shrunk away dynesty's comes out too small, or not a number.
+    """
+    least = np.sqrt(max(float(found.information[-1]), 0.0) / live)
+    stated = float(found.logzerr[-1])
+    return float(max(least, stated)) if np.isfinite(stated) else float(least)
 
 
 def _skip_the_whole_cube(sampler: NestedSampler) -> None:

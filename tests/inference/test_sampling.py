@@ -8,7 +8,7 @@ from emu.families.parameters import Parameter
 from emu.families.prior import Prior
 from emu.families.priors import Uniform
 from emu.inference.convergence import length_over_memory, rank_rhat
-from emu.inference.draws import Draws, combined, distinct, resampled
+from emu.inference.draws import Draws, distinct, pooled, resampled
 from emu.inference.maps import fit_maps
 from emu.inference.sampling import ensembles, nested, nested_about, sample_exactly
 from emu.problem import Problem
@@ -118,13 +118,13 @@ def test_distinct_draws_follow_the_weights_without_repetition():
     assert len(distinct(draws, rng, 10)) == 10
 
 
-def test_joined_runs_weigh_as_their_evidences():
-    one, other = (Draws(np.full((5, 1), value), np.full(5, -np.log(5)), log_z, 0.1, 10, 1.0, "nested")
-                  for value, log_z in ((0.0, np.log(3.0)), (1.0, 0.0)))
-    joined = combined((one, other))
-    assert joined.log_evidence == pytest.approx(np.log(2.0))
-    assert joined.weight @ joined.theta[:, 0] == pytest.approx(0.25)
-    assert joined.calls == 20
+def test_pooled_runs_share_equally_unless_one_found_nothing():
+    one, other, lost = (Draws(np.full((5, 1), value), np.full(5, -np.log(5)), log_z, 0.1, 10, 1.0, "nested")
+                        for value, log_z in ((0.0, 3.0), (1.0, 0.0), (9.0, -50.0)))
+    joined = pooled((one, other, lost))
+    assert joined.weight @ joined.theta[:, 0] == pytest.approx(0.5)
+    assert np.isnan(joined.log_evidence)
+    assert joined.calls == 30
 
 
 def test_fitted_maps_follow_a_curved_ridge_and_are_normalised():

@@ -13,7 +13,7 @@ from safetensors import safe_open
 from safetensors.numpy import load, save
 
 from emu.inference.counted import CountedPosterior
-from emu.inference.draws import Draws, combined, distinct
+from emu.inference.draws import Draws, distinct, pooled
 from emu.inference.ensembles import EnsemblePlan, Ensembles, gather, plan_ensembles
 from emu.inference.nested import nested, nested_about
 from emu.inference.walkers import Block
@@ -92,7 +92,7 @@ def run_flare(problem: Problem, flare: HeldOut, plan: ReferencePlan, work: Path,
             progress=progress))
         for place, number in enumerate(numbers[:-1]))
     found = _nested_part(work / "nested.safetensors", progress, partial(
-        nested_about, problem, flare.rows, combined(scouts), live=plan.live, walks=plan.walks,
+        nested_about, problem, flare.rows, pooled(scouts), live=plan.live, walks=plan.walks,
         seed=numbers[-1], progress=progress))
     chains, steps, ensemble_plan = _ensembles(problem, flare, found, plan, work, seed, progress)
     return FlareRuns(scouts, found, chains, steps, ensemble_plan)

@@ -130,13 +130,13 @@ def _judge(what: Problem, name: str, flare: HeldOut, runs: FlareRuns, seed: int,
 def _reasons(runs: FlareRuns, accuracy: float, draws: int, plan: ReferencePlan) -> list[str]:
     """List why a flare does not count as exact."""
     found, chains = [], runs.ensembles
-    if runs.nested.log_evidence_error > plan.evidence_error:
+    if not runs.nested.log_evidence_error <= plan.evidence_error:  # not a number fails, too
         found.append(f"error of ln Z {runs.nested.log_evidence_error:.2f} > {plan.evidence_error}")
-    if chains.rhat.max() >= RHAT_LIMIT:
+    if not chains.rhat.max() < RHAT_LIMIT:
         found.append(f"R-hat {chains.rhat.max():.3f} >= {RHAT_LIMIT}")
-    if chains.length.min() < LENGTH_LIMIT:
+    if not chains.length.min() >= LENGTH_LIMIT:
         found.append(f"chains of {chains.length.min():.0f} < {LENGTH_LIMIT:.0f} autocorrelation times")
-    if accuracy > AGREEMENT:
+    if not accuracy <= AGREEMENT:
         found.append(f"C2ST between samplers {accuracy:.3f} > {AGREEMENT}")
     if draws < 1000:
         found.append(f"only {draws} distinct draws to compare")
