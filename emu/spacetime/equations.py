@@ -61,7 +61,7 @@ def initial(cos_i, sin_i, alpha, beta, y):
         y[24, k], y[26, k] = -cos_i[k], sin_i[k]  # ∂x'/∂β, ∂z'/∂β
 
 
-@njit(cache=True, fastmath=_FAST, error_model="numpy")
+@njit(cache=True, fastmath=_FAST, error_model="numpy", inline="always")
 def _ray(y, par, sign, out):
     """Write the derivatives of the ten states of the rays themselves."""
     for k in range(LANES):
@@ -81,12 +81,12 @@ def _ray(y, par, sign, out):
         out[9, k] = (1.0 + aa * uu) * q / (1.0 + (aa - a * lam) * uu + sign[k] * v) + a * (lam - a * (1.0 - z * z))
 
 
-@njit(cache=True, fastmath=_FAST, error_model="numpy")
-def _variation(y, par, first, lam_p, constant, out):
+@njit(cache=True, fastmath=_FAST, error_model="numpy", inline="always")
+def _variation(y, par, first, lam_row, constant, out):
     """Write the derivatives of the nine states from `first` on, which are the ray's differentiated by α or β.
 
     Args:
-        lam_p: (LANES,) dλ/dα or dλ/dβ.
+        lam_row: the row of `par` with dλ/dα or dλ/dβ.
         constant: the row of `par` with the derivative of c₁; those of c₂, c₃ and η + λ² follow it.
     """
     for k in range(LANES):
@@ -108,12 +108,12 @@ def _variation(y, par, first, lam_p, constant, out):
         out[first + 5, k] = -big_k * y[first + 2, k] - dk * y[2, k]
         out[first + 6, k] = -big_k * y[first + 3, k] - dk * y[3, k]
         out[first + 7, k] = -(big_k - aa) * dz - dk * z
-        out[first + 8, k] = turn * du + aa * lam_p[k] * uu * inverse
+        out[first + 8, k] = turn * du + aa * par[lam_row, k] * uu * inverse
 
 
 @njit(cache=True, fastmath=_FAST, error_model="numpy")
 def derivative(y, par, sign, out):
     """Write d`y`/dτ of all lanes to `out` (STATES, LANES); `sign` (LANES,) is the form of T that is followed."""
     _ray(y, par, sign, out)
-    _variation(y, par, 10, par[6], 7, out)
-    _variation(y, par, 19, par[15], 11, out)
+    _variation(y, par, 10, 6, 7, out)
+    _variation(y, par, 19, 15, 11, out)

@@ -19,7 +19,9 @@ from emu.spacetime.start import critical_impact
 __all__ = ["in_tube"]
 
 _LOOKS = 24
-_WIDTHS = (0.3, 0.9)  # generous bounds of a tube's half width over a² sin² i, rad of swept angle, orders 0 and 1
+# Generous bounds of a tube's half width, rad of swept angle: behind the hole over a² sin² i/r (0.17 at most was seen),
+# before it, where the light has gone round the hole, over a² sin² i.
+_WIDTHS = (0.5, 0.9)
 _SAME = 1e-2  # GM/c²
 _NEWTON_STEPS = 20
 _LEAST_BEYOND = 0.01  # GM/c², of a start beyond the critical curve
@@ -64,7 +66,7 @@ def in_tube(
         (N,) bool.
     """
     end = math.pi * (order + 1)
-    width = _WIDTHS[order] * (spin * np.sin(inclination)) ** 2
+    width = _WIDTHS[order] * (spin * np.sin(inclination)) ** 2 / (r if order == 0 else 1.0)
     inside = np.zeros(len(r), dtype=bool)
     (near,) = np.nonzero(np.abs(swept - end) < width)
     if len(near) == 0:
