@@ -46,12 +46,19 @@ def draw_checks(out: Path, calibration: Calibration, efficiency: tuple[Efficienc
 
 
 def draw_across(place: Path, across: Across) -> None:
-    """Draw coverage and contraction of every shared parameter as matrices, into one PNG file."""
-    with _figure(place, 2, len(across.shared), (3.0, 2.8)) as axes:
-        rows = ((across.coverage, "68 % coverage"), (across.contraction, "contraction"))
+    """Draw coverage and contraction of every shared parameter as matrices in per cent, into one PNG file."""
+    side = 1.2 + 0.28 * len(across.families)
+    with _figure(place, 2, len(across.shared), (side, side)) as axes:
+        rows = ((across.coverage, "coverage of 68 % intervals"), (across.contraction, "contraction"))
         for line, (value, label) in enumerate(rows):
             for column, name in enumerate(across.shared):
-                _matrix(axes[line, column], value[..., column], across.families, f"{name}: {label}")
+                _matrix(axes[line, column], value[..., column], f"{name}: {label}, %")
+        for ax in axes[-1]:
+            ax.set_xticks(range(len(across.families)), across.families, rotation=90, fontsize=7)
+            ax.set_xlabel("family that made the flares", fontsize=8)
+        for ax in axes[:, 0]:
+            ax.set_yticks(range(len(across.families)), across.families, fontsize=7)
+            ax.set_ylabel("family assumed", fontsize=8)
 
 
 def _ranks(place: Path, calibration: Calibration) -> None:
@@ -68,6 +75,8 @@ def _ranks(place: Path, calibration: Calibration) -> None:
             ax.set_title(name, fontsize=8)
         for ax in axes.flat[ranks.shape[1]:]:
             ax.set_axis_off()
+        axes[0, 0].figure.supxlabel("rank of the truth among the draws, as a share", fontsize=9)
+        axes[0, 0].figure.supylabel("share of flares below it, less that rank (band: 95 %)", fontsize=9)
 
 
 def _coverage(place: Path, calibration: Calibration) -> None:
@@ -129,14 +138,14 @@ def _references(place: Path, against: tuple[Against, ...]) -> None:
         axes[0, 0].legend(fontsize=7)
 
 
-def _matrix(ax: Axes, value: np.ndarray, families: tuple[str, ...], title: str) -> None:
-    """Draw a matrix with its numbers."""
+def _matrix(ax: Axes, value: np.ndarray, title: str) -> None:
+    """Draw a matrix of shares with its numbers in per cent, without ticks."""
     ax.imshow(value, vmin=0.0, vmax=1.0, cmap="viridis")
     for a, b in np.ndindex(value.shape):
-        ax.text(b, a, f"{value[a, b]:.2f}", ha="center", va="center", fontsize=6,
+        ax.text(b, a, f"{100.0 * value[a, b]:.0f}", ha="center", va="center", fontsize=7,
                 color="w" if value[a, b] < 0.6 else "k")
-    ax.set_xticks(range(len(families)), families, rotation=90, fontsize=6)
-    ax.set_yticks(range(len(families)), families, fontsize=6)
+    ax.set_xticks([])
+    ax.set_yticks([])
     ax.set_title(title, fontsize=8)
 
 
