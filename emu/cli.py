@@ -71,7 +71,7 @@ def infer(
     finish_by: Annotated[
         str, typer.Option("--finish", help="none, or exact: sample the exact likelihood, slowly.")
     ] = "none",
-    raymap: Annotated[str, typer.Option(help="exact: how rays are found.")] = "exact",
+    raymap: Annotated[str, typer.Option(help="How the likelihood finds rays: exact, or learned (faster).")] = "exact",
     columns: Columns = None,
     campaign: Annotated[str | None, typer.Option(help="Without a bundle: campaign name or TOML.")] = None,
     target: Target = None,

@@ -12,10 +12,13 @@ from emu.assemble import assemble, in_radians
 from emu.families.density import Array
 from emu.families.parameters import Parameter
 from emu.families.prior import Prior
+from emu.raymap.base import RayMap
 from emu.raymap.exact import ExactRays
 from emu.source.source import Source
 
 __all__ = ["Family"]
+
+_EXACT = ExactRays()
 
 
 @dataclass(frozen=True)
@@ -34,6 +37,7 @@ class Family:
         bumps: how often the emitter brightens, 1 or 2.
         spot: True for a cloud of finite size, False for a point.
         orders: images added up: 1 direct, 2 with the next.
+        raymap: how rays are found; no part of a family's TOML.
     """
 
     name: str
@@ -47,6 +51,7 @@ class Family:
     bumps: int = 1
     spot: bool = False
     orders: int = 1
+    raymap: RayMap = _EXACT
 
     kinds = ("flux", "q", "u", "east", "north")
     standard_frame = True
@@ -75,7 +80,7 @@ class Family:
             return {**dict.fromkeys(self.kinds, np.empty((0, count))), "failures": np.empty(0)}
         per_flare = np.ascontiguousarray(np.broadcast_to(times, (len(theta), count)), float)
         curves = assemble(
-            self.source, self._values(theta), per_flare, ExactRays(), orders=self.orders, spot_points=None
+            self.source, self._values(theta), per_flare, self.raymap, orders=self.orders, spot_points=None
         )
         return {kind: curves[kind] for kind in (*self.kinds, "failures")}
 

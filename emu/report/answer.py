@@ -42,7 +42,7 @@ def answer(
         families: which to answer under; None for all of the bundle.
         draws: draws a flare and family.
         finish: "none" for the estimator's draws, "exact" for exact sampling.
-        raymap: "exact", the only way of finding rays so far.
+        raymap: "exact", or "learned", for the likelihood: the same within a stated accuracy, and much faster.
         columns: TOML that translates other people's headers.
         campaign: name or path of a campaign, only without a bundle.
         target: name or path of a target; the campaign's where None.
@@ -55,11 +55,11 @@ def answer(
         UserError: options do not fit together, or a config or the bundle cannot be used.
     """
     _check_choice("finish", finish, ("none", "exact"))
-    _check_choice("raymap", raymap, ("exact",))
+    _check_choice("raymap", raymap, ("exact", "learned"))
     _check_count("draws", draws)
     _check_count("workers", workers)
     asked = None if families is None else tuple(families)
-    recipe = _recipe(bundle, campaign, asked, finish == "exact")
+    recipe = _recipe(bundle, campaign, asked, finish == "exact", raymap)
     wish = Wish(
         families=asked if bundle is not None else None,
         draws=draws,
@@ -89,15 +89,15 @@ def _check_count(option: str, value: int) -> None:
 
 
 def _recipe(
-    bundle: Path | None, campaign: str | None, families: tuple[str, ...] | None, exact: bool
+    bundle: Path | None, campaign: str | None, families: tuple[str, ...] | None, exact: bool, raymap: str
 ) -> Recipe:
     """Choose where answers come from."""
     if bundle is not None:
         if campaign is not None:
             raise UserError("a bundle holds its own campaign; leave --campaign or --bundle out")
-        return FromBundle(bundle)
+        return FromBundle(bundle, raymap)
     if not exact:
         raise UserError("give --bundle; or --finish exact with --campaign and --families, which is slow")
     if campaign is None or families is None:
         raise UserError("without a bundle, --finish exact needs --campaign and --families")
-    return FromConfigs(campaign, families)
+    return FromConfigs(campaign, families, raymap)

@@ -101,9 +101,11 @@ class FromBundle:
 
     Args:
         path: its folder.
+        raymap: how the exact likelihood finds its rays.
     """
 
     path: Path
+    raymap: str = "exact"
 
     def open(self) -> Toolbox:
         """Check and open the bundle; each estimator is loaded when it is first asked for."""
@@ -111,13 +113,13 @@ class FromBundle:
 
         bundle = open_bundle(self.path)
         classifier = bundle.classifier
-        problems = {name: bundle.problem(name) for name in bundle.families}
+        problems = {name: _by_raymap(bundle.problem(name), self.raymap) for name in bundle.families}
         ordered = None if classifier is None else partial(_ordered, classifier, tuple(problems))
         return Toolbox(bundle.campaign, problems, cache(bundle.estimator), ordered)
 
     def origin(self) -> dict[str, Any]:
         """Return the path and the checksum of the bundle."""
-        return {"bundle": str(self.path), "sha256": checksum(self.path)}
+        return {"bundle": str(self.path), "sha256": checksum(self.path), "raymap": self.raymap}
 
 
 @dataclass(frozen=True)
@@ -127,10 +129,12 @@ class FromConfigs:
     Args:
         campaign: name or path of a campaign.
         families: names or paths of families.
+        raymap: how the exact likelihood finds its rays.
     """
 
     campaign: str
     families: tuple[str, ...]
+    raymap: str = "exact"
 
     def open(self) -> Toolbox:
         """Read the configs."""
@@ -143,14 +147,31 @@ class FromConfigs:
         for name in names:
             if names.count(name) > 1:
                 raise UserError(f"family {name!r} is named twice; name it once")
-        return Toolbox(season, {each.name: Problem(each, season) for each in models})
+        return Toolbox(season, {each.name: _by_raymap(Problem(each, season), self.raymap) for each in models})
 
     def origin(self) -> dict[str, Any]:
         """Return the names of the configs and the checksums of their texts."""
         return {
             "campaign": {"name": self.campaign, "sha256": _text_sum("campaigns", self.campaign)},
             "families": [{"name": name, "sha256": _family_sum(name)} for name in self.families],
+            "raymap": self.raymap,
         }
+
+
+def _by_raymap(problem: Problem, raymap: str) -> Problem:
+    """Return the problem with rays found in another way.
+
+    Raises:
+        UserError: the model is not one of ours, and knows of no rays.
+    """
+    from emu.families.family import Family
+    from emu.raymap.catalogue import find_raymap
+
+    if raymap == "exact":
+        return problem
+    if not isinstance(problem.model, Family):
+        raise UserError(f"{problem.name} is a model of its own and traces no rays of ours; leave --raymap out")
+    return replace(problem, model=replace(problem.model, raymap=find_raymap(raymap)))
 
 
 def _ordered(classifier: _Classifier, families: tuple[str, ...], batch: RowBatch) -> Array:
