@@ -22,7 +22,7 @@ FAMILIES = ("midplane-frozen", "midplane-turning", "midplane-turbulent")
 # family, how many flares, seed
 SEASON = (("midplane-frozen", 5, 101), ("midplane-turning", 3, 102), ("midplane-turbulent", 2, 103))
 SHOWN = (("radius", " GM/c2"), ("inclination", " deg"), ("spin", ""))
-CASES = 200  # held-out flares of the checks
+CASES = 100  # held-out flares of the checks
 FEW_DRAWS = 100  # effective draws below which weights say that the exact posterior is much narrower
 
 
@@ -77,7 +77,7 @@ def _checks(out: Path, bundle: Path, begin: float, log: Path) -> None:
     """Check the estimators on held-out flares and print the verdicts."""
     _title(begin, "Check the estimators on flares they have never seen")
     _run(
-        [["emu-train", "check", str(bundle), "--out", f"{out}/checks", "--cases", str(CASES), "--weighed", "4"]],
+        [["emu-train", "check", str(bundle), "--out", f"{out}/checks", "--cases", str(CASES), "--weighed", "1"]],
         log, (0, 1, 4),
     )  # fmt: skip
     for name in FAMILIES:
@@ -160,8 +160,8 @@ def run_demo(out: Path, flares: int, steps: int) -> None:
 
 def _main(
     out: Annotated[Path, typer.Option(help="Folder for all that the demo writes.")] = Path("demo-output"),
-    flares: Annotated[int, typer.Option(help="Flares of each training set.")] = 30_000,
-    steps: Annotated[int, typer.Option(help="Steps of each fit.")] = 800,
+    flares: Annotated[int, typer.Option(help="Flares of each training set.")] = 20_000,
+    steps: Annotated[int, typer.Option(help="Steps of each fit.")] = 600,
 ) -> None:
     """Run the main job on an invented season."""
     run_demo(out, flares, steps)
