@@ -111,7 +111,8 @@ def _print_flare(flare: str, by_family: dict[str, Row], summary: Table) -> None:
     chances = "  ".join(f"{name.split('-')[1]} {by_family[name]['probability']:.2f}" for name in FAMILIES)
     cells = ", ".join(f"{name} {_interval(summary, flare, best, name)}{unit}" for name, unit in SHOWN)
     row = by_family[best]
-    print(f"  {flare:32s} {chances}")
+    undecided = "" if by_family[best]["probability"] > 0.5 else "  (cannot tell)"
+    print(f"  {flare:32s} {chances}{undecided}")
     print(f"      {best}: {cells}; {row['ess']:.0f} of {row['draws']} draws effective")
 
 
