@@ -7,6 +7,7 @@ import statistics
 import time
 from collections.abc import Callable
 from dataclasses import asdict, dataclass
+from functools import partial
 from typing import Annotated
 
 import numpy as np
@@ -88,7 +89,7 @@ def _ray_figures(rng: np.random.Generator, repeats: int) -> list[Figure]:
         _figure(
             f"rays without a near start, order {order}",
             "rays/s",
-            _rates(lambda order=order: solve_rays(spin, inclination, r, n, order), count, repeats),  # type: ignore[misc]
+            _rates(partial(solve_rays, spin, inclination, r, n, order), count, repeats),
         )
         for order in (0, 1)
     ]
@@ -102,7 +103,7 @@ def _likelihood_figures(rng: np.random.Generator, repeats: int) -> list[Figure]:
         batch = asked.campaign.draw(1, rng)
         seen, _ = asked.simulate(theta[:1], batch, rng)
         rows: Rows = seen.rows(0)
-        rates = _rates(lambda asked=asked, theta=theta, rows=rows: log_likelihood(asked, theta, rows), 256, repeats)  # type: ignore[misc]
+        rates = _rates(partial(log_likelihood, asked, theta, rows), 256, repeats)
         figures.append(_figure(f"likelihoods of {name}, {len(rows.time)} rows", "1/s", rates))
     return figures
 
@@ -117,7 +118,7 @@ def measure(repeats: int = 5, slow: int = 3) -> list[Figure]:
     kind = family("midplane-frozen")
     theta, times = _orbits(kind, FLARES, rng)
     reference = _independent(kind, theta, times, slow)
-    rates = _rates(lambda: kind.curves(theta, times), FLARES, repeats)
+    rates = _rates(partial(kind.curves, theta, times), FLARES, repeats)
     figures = [reference, _figure(f"curves of midplane-frozen, {ROWS} rows", "flares/s", rates, reference)]
     return [*figures, *_ray_figures(rng, repeats), *_likelihood_figures(rng, repeats)]
 

@@ -11,11 +11,8 @@ from __future__ import annotations
 import hashlib
 import json
 import shutil
-from collections.abc import Callable
-from concurrent.futures import ProcessPoolExecutor
 from dataclasses import asdict
 from functools import partial
-from multiprocessing import get_context
 from pathlib import Path
 
 import numpy as np
@@ -26,6 +23,7 @@ from emu.inference.counted import CountedPosterior
 from emu.inference.ensembles import LENGTH_LIMIT, RHAT_LIMIT
 from emu.inference.walkers import log_target
 from emu.problem import Problem, problem
+from emu.processes import in_processes
 from training.checks.efficiency import importance_efficiency
 from training.checks.held_out import HeldOut, held_out
 from training.checks.reference_parts import FlareRuns, ReferencePlan, draws_to_keep, run_flare
@@ -72,13 +70,11 @@ def make_references(what: Problem, out: Path, *, want: int, seed: int, workers: 
     _claim(out, what, seed, kinds, plan)
     work = partial(_one_flare, what, out, seed=seed, kinds=kinds, plan=plan)
     exact, case = 0, 0
-    with ProcessPoolExecutor(workers, mp_context=get_context("spawn")) as pool:
-        mapped: Callable = pool.map if workers > 1 else map
-        while exact < want and case < most:
-            cases = range(case, min(case + workers, most))
-            exact += sum(reference.exact for reference in mapped(work, cases))
-            case = cases[-1] + 1
-            _summarise(out)
+    while exact < want and case < most:
+        cases = range(case, min(case + workers, most))
+        exact += sum(reference.exact for reference in in_processes(work, cases, workers))
+        case = cases[-1] + 1
+        _summarise(out)
     if (out / "work").is_dir() and not any((out / "work").iterdir()):
         (out / "work").rmdir()
     return exact
