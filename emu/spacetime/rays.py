@@ -41,7 +41,6 @@ class Rays:
         magnification: μ = |d(α, β)/dA⊥|, dA⊥ the cross-section of the bundle at the source.
         swept: angle swept about the hole, the drag apart, rad.
         failed: True where no ray was found; the other entries are then zero.
-        continued: True where the continuation was needed.
     """
 
     alpha: Array
@@ -54,7 +53,6 @@ class Rays:
     magnification: Array
     swept: Array
     failed: Flags
-    continued: Flags
 
 
 @functools.cache
@@ -151,7 +149,5 @@ def solve_rays(
         parts = (spin[again], cos_i[again], sin_i[again], r[again], np.ascontiguousarray(n[again]))
         rays[again], good[again] = _continue(*parts, order)
     rays[~good] = 0.0
-    continued = np.zeros(len(r), dtype=bool)
-    continued[again] = True
     alpha, beta, tau, delay, p_r, p_theta, p_phi, signed, swept = rays.T.copy()
-    return Rays(alpha, beta, tau, delay, p_r, p_theta, p_phi, np.abs(signed), swept, ~good, continued)
+    return Rays(alpha, beta, tau, delay, p_r, p_theta, p_phi, np.abs(signed), swept, ~good)
